@@ -1,0 +1,1 @@
+"""The plan: which nodes a study consists of, and the key of each. Decides; runs nothing."""
