@@ -226,7 +226,7 @@ def _table_node(
     available: Callable[[str], bool],
 ) -> Node:
     rows, parents = [], []
-    for row in study.recordings:
+    for row in sorted(study.recordings, key=lambda row: row.recording):
         keys = {
             step: slots.get((row.recording, name, step), "") for step in ("features", "quality")
         }

@@ -1,0 +1,84 @@
+"""Frames as Parquet files, and back.
+
+Signals are written plain: no dictionary, no codec, no statistics, one row group. Compressing filtered samples costs
+two to four times the time for a tenth of the bytes. Integers are delta packed, which is lossless and below the size
+of the raw file.
+"""
+
+from __future__ import annotations
+
+import json
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.parquet as pq
+
+from bandcairn.store.frame import Frame
+
+if TYPE_CHECKING:
+    from collections.abc import Mapping
+    from pathlib import Path
+
+    from bandcairn.store.frame import Column
+
+_FACTS = b"bandcairn"
+_RECORD = b"bandcairn_record"
+_WHOLE_FILE = 1 << 62
+
+
+def write_frame(path: Path, frame: Frame, record: Mapping[str, Any]) -> None:
+    """Write a frame with its provenance record into a new file."""
+    arrays = {name: _to_arrow(column) for name, column in frame.columns.items()}
+    table = pa.table(arrays).replace_schema_metadata(
+        {_FACTS: json.dumps(dict(frame.facts)), _RECORD: json.dumps(dict(record))}
+    )
+    packed = {name: "DELTA_BINARY_PACKED" for name, array in arrays.items() if pa.types.is_integer(array.type)}
+    pq.write_table(
+        table,
+        path,
+        use_dictionary=False,
+        compression="none",
+        write_statistics=False,
+        column_encoding=packed or None,
+        data_page_size=64 << 20,
+        row_group_size=_WHOLE_FILE,
+    )
+
+
+def read_frame(path: Path) -> tuple[Frame, dict[str, Any]]:
+    """Return the frame of a file and its provenance record.
+
+    Raises
+    ------
+    OSError, pyarrow.ArrowInvalid, KeyError, ValueError
+        If the file is no whole node.
+    """
+    with pq.ParquetFile(path, memory_map=True) as file:
+        table = file.read(use_threads=False)
+    metadata = table.schema.metadata
+    columns = {name: _from_arrow(table.column(name)) for name in table.column_names}
+    return Frame(columns, json.loads(metadata[_FACTS])), json.loads(metadata[_RECORD])
+
+
+def read_record(path: Path) -> dict[str, Any]:
+    """Return the provenance record of a node's file without reading its data."""
+    record: dict[str, Any] = json.loads(pq.read_schema(path, memory_map=True).metadata[_RECORD])
+    return record
+
+
+def _to_arrow(column: Column) -> pa.Array:
+    if isinstance(column, tuple):
+        return pa.array(column, pa.string())
+    if column.dtype.kind == "f" and np.isnan(column).any():
+        return pa.array(column, from_pandas=True)
+    return pa.array(np.ascontiguousarray(column))
+
+
+def _from_arrow(column: pa.ChunkedArray) -> Column:
+    if pa.types.is_string(column.type):
+        return tuple(column.to_pylist())
+    values = column.chunk(0) if column.num_chunks == 1 else column.combine_chunks()
+    numbers: np.ndarray[Any, Any] = values.to_numpy(zero_copy_only=False)
+    numbers.flags.writeable = False
+    return numbers
