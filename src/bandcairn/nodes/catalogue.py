@@ -27,7 +27,7 @@ class Step:
     does: str
 
 
-# In the order of the data. The first eight act on one signal of one recording, the last two on the study.
+# In the order of the data. The first eight act on one signal of one recording, the others on the study.
 STEPS = (
     Step("load", 1, "reads a signal's channels from the raw file at their own rate"),
     Step("quality", 1, "measures clipped and flat stretches before anything is done to the samples"),
@@ -37,6 +37,7 @@ STEPS = (
     Step("epoch", 1, "lays windows and marks those to reject"),
     Step("spectrum", 1, "estimates power spectral densities"),
     Step("features", 1, "computes the features of one signal of one recording"),
+    Step("verdict", 1, "holds each channel's quality against the study's limits"),
     Step("table", 1, "gathers a signal's features from all recordings"),
     Step("statistics", 1, "answers the questions of one family"),
 )

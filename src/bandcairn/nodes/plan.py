@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cache
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from bandcairn.nodes.key import canonical_json
 from bandcairn.nodes.node import Node, make_node
@@ -102,16 +102,17 @@ def plan_study_nodes(
     Returns
     -------
     dict of str to Node
-        By key, tables before statistics.
+        By key, parents before children.
     """
-    tables = {
-        name: _table_node(name, signal, study, slots, available)
+    pairs = {
+        name: _signal_nodes(name, signal, study, slots, available)
         for name, signal in study.description.signals.items()
     }
-    statistics = (
+    tables = {name: table for name, (_, table) in pairs.items()}
+    statistics = [
         _statistics_node(family, questions, tables) for family, questions in families(study).items()
-    )
-    return {node.key: node for node in (*tables.values(), *statistics)}
+    ]
+    return {node.key: node for node in (*(node for pair in pairs.values() for node in pair), *statistics)}
 
 
 def families(study: LoadedStudy) -> dict[str, tuple[Question, ...]]:
@@ -218,29 +219,35 @@ class _SignalChain:
         return canonical_json({**self.signal.epoch.model_dump(mode="json"), "segments": segments})
 
 
-def _table_node(
+def _signal_nodes(
     name: str,
     signal: SignalDescription,
     study: LoadedStudy,
     slots: Mapping[tuple[str, str, str], str],
     available: Callable[[str], bool],
-) -> Node:
-    rows, parents = [], []
+) -> tuple[Node, Node]:
+    """Return the verdict and the table of one signal, over the recordings that have both features and quality."""
+    rows: list[dict[str, Any]] = []
+    keys: dict[str, list[tuple[str, str]]] = {"features": [], "quality": []}
     for row in sorted(study.recordings, key=lambda row: row.recording):
-        keys = {
-            step: slots.get((row.recording, name, step), "") for step in ("features", "quality")
-        }
-        if not all(key and available(key) for key in keys.values()):
-            continue
-        rows.append({"recording": row.recording, "participant": row.participant, "design": row.design})
-        parents += [(f"{step}/{row.recording}", key) for step, key in keys.items()]
-    parameters = {
-        "signal": name,
-        "kind": signal.kind,
-        "quality": signal.quality.model_dump(mode="json"),
-        "rows": rows,
-    }
-    return make_node("table", parameters=canonical_json(parameters), parents=tuple(parents), signal=name)
+        found = {step: slots.get((row.recording, name, step), "") for step in keys}
+        if all(key and available(key) for key in found.values()):
+            rows.append({"recording": row.recording, "participant": row.participant, "design": row.design})
+            for step, key in found.items():
+                keys[step].append((f"{step}/{row.recording}", key))
+    verdict = make_node(
+        "verdict",
+        parameters=canonical_json({"signal": name, "limits": signal.quality.model_dump(mode="json")}),
+        parents=tuple(keys["quality"]),
+        signal=name,
+    )
+    table = make_node(
+        "table",
+        parameters=canonical_json({"signal": name, "kind": signal.kind, "rows": rows}),
+        parents=(*keys["features"], ("verdict", verdict.key)),
+        signal=name,
+    )
+    return verdict, table
 
 
 def _statistics_node(family: str, questions: tuple[Question, ...], tables: Mapping[str, Node]) -> Node:

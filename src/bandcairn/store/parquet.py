@@ -29,11 +29,15 @@ _WHOLE_FILE = 1 << 62
 
 def write_frame(path: Path, frame: Frame, record: Mapping[str, Any]) -> None:
     """Write a frame with its provenance record into a new file."""
-    arrays = {name: _to_arrow(column) for name, column in frame.columns.items()}
-    table = pa.table(arrays).replace_schema_metadata(
-        {_FACTS: json.dumps(dict(frame.facts)), _RECORD: json.dumps(dict(record))}
-    )
-    packed = {name: "DELTA_BINARY_PACKED" for name, array in arrays.items() if pa.types.is_integer(array.type)}
+    arrays = [_to_arrow(column) for column in frame.columns.values()]
+    # A column declared free of nulls is written and read twice as fast.
+    fields = [
+        pa.field(name, array.type, nullable=array.null_count > 0)
+        for name, array in zip(frame.columns, arrays, strict=True)
+    ]
+    metadata = {_FACTS: json.dumps(dict(frame.facts)), _RECORD: json.dumps(dict(record))}
+    table = pa.Table.from_arrays(arrays, schema=pa.schema(fields, metadata))
+    packed = {field.name: "DELTA_BINARY_PACKED" for field in fields if pa.types.is_integer(field.type)}
     pq.write_table(
         table,
         path,

@@ -132,4 +132,5 @@ def _verify_written(path: Path, frame: Frame, key: str) -> None:
 def _equal(first: Any, second: Any) -> bool:  # noqa: ANN401 - a column of either kind
     if isinstance(second, tuple):
         return bool(first == second)
-    return bool(np.array_equal(first, second, equal_nan=second.dtype.kind == "f"))
+    nullable = second.dtype.kind == "f" and np.isnan(second).any()
+    return bool(np.array_equal(first, second, equal_nan=nullable))
