@@ -1,0 +1,1 @@
+"""Pure numerics: arrays and numbers in, arrays and frozen results out; no files, no study."""
