@@ -1,0 +1,147 @@
+"""The clock column of delimited text: printed times in, the exact sampling rate out."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bandcairn.recordings.refusal import refusal
+
+if TYPE_CHECKING:
+    from pathlib import Path
+
+    from numpy.typing import NDArray
+
+TIME_COLUMN = "time_s"
+# The hair beyond half a printed digit: sums of binary fractions drift by less than a nanosecond.
+_HAIR_S = 1e-9
+
+
+@dataclass(frozen=True, slots=True)
+class Clock:
+    """What the printed times say of the rate.
+
+    Attributes
+    ----------
+    slowest_hz, fastest_hz : Fraction or None
+        Every rate between them puts each sample within half of the last printed digit of its time; None where
+        there is a single row.
+    """
+
+    slowest_hz: Fraction | None
+    fastest_hz: Fraction | None
+
+    @property
+    def rate_hz(self) -> Fraction | None:
+        """The simplest fraction among the possible rates."""
+        if self.slowest_hz is None or self.fastest_hz is None:
+            return None
+        return simplest_between(self.slowest_hz, self.fastest_hz)
+
+    def agrees_with(self, rate_hz: Fraction) -> bool:
+        """Return whether `rate_hz` is among the possible rates."""
+        if self.slowest_hz is None or self.fastest_hz is None:
+            return True
+        return self.slowest_hz <= rate_hz <= self.fastest_hz
+
+
+def read_clock(path: Path, cells: list[str]) -> Clock:
+    """Return the rates that fit all printed times.
+
+    Sample k lies at k / rate, so row k bounds the period to (time +- half a digit) / k; the bounds of all
+    rows must overlap.
+
+    Parameters
+    ----------
+    path : Path
+        Named in refusals.
+    cells : list of str
+        Times in seconds as printed, one a row.
+
+    Returns
+    -------
+    Clock
+        The range of possible rates.
+
+    Raises
+    ------
+    RecordingError
+        If a cell is no number, if the first time is not 0, or if the rows do not fit one rate.
+    """
+    times_s = _times_s(path, cells)
+    slack_s = 0.5 * 10.0 ** -_decimals(cells) + _HAIR_S
+    if abs(times_s[0]) > slack_s[0]:
+        remedy = "Time counts from the first sample: export it so, or leave the column away."
+        raise refusal(path, f"{cells[0]} in row 1, column {TIME_COLUMN}", "0", remedy)
+    if len(cells) == 1:
+        return Clock(None, None)
+    index = np.arange(1, len(cells))
+    shortest_s = np.maximum.accumulate((times_s[1:] - slack_s[1:]) / index)
+    longest_s = np.minimum.accumulate((times_s[1:] + slack_s[1:]) / index)
+    off = np.flatnonzero((shortest_s > longest_s) | (longest_s <= 0))
+    if off.size:
+        raise _irregular(path, cells, int(off[0]) + 1)
+    return _clock(path, float(shortest_s[-1]), float(longest_s[-1]))
+
+
+def simplest_between(low: Fraction, high: Fraction) -> Fraction:
+    """Return the fraction of smallest denominator with low <= it <= high, both positive.
+
+    The walk down the Stern-Brocot tree, written as a continued fraction.
+    """
+    whole = low.numerator // low.denominator
+    if whole == low:
+        return Fraction(whole)
+    if whole + 1 <= high:
+        return Fraction(whole + 1)
+    return whole + 1 / simplest_between(1 / (high - whole), 1 / (low - whole))
+
+
+def _times_s(path: Path, cells: list[str]) -> NDArray[np.float64]:
+    try:
+        times_s = np.array(cells, dtype=np.str_).astype(np.float64)
+        off = np.flatnonzero(~np.isfinite(times_s))
+        if not off.size:
+            return times_s
+        row = int(off[0])
+    except ValueError:
+        row = next(row for row, cell in enumerate(cells) if not _is_number(cell))
+    found = f"{cells[row]!r} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}"
+    raise refusal(path, found, "a time in seconds", "Restore the original file.")
+
+
+def _is_number(cell: str) -> bool:
+    try:
+        float(cell)
+    except ValueError:
+        return False
+    return True
+
+
+def _decimals(cells: list[str]) -> NDArray[np.float64]:
+    """Return how many digits stand behind the point of each cell; an exponent moves the point."""
+    texts = np.array(cells, dtype=np.str_)
+    points = np.strings.find(texts, ".")
+    decimals = np.where(points < 0, 0, np.strings.str_len(texts) - points - 1).astype(np.float64)
+    for row in np.flatnonzero(np.strings.find(np.strings.lower(texts), "e") >= 0):
+        mantissa, exponent = cells[row].lower().split("e")
+        decimals[row] = len(mantissa.partition(".")[2]) - int(exponent)
+    return decimals
+
+
+def _irregular(path: Path, cells: list[str], row: int) -> Exception:
+    found = f"{cells[row]} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}, after {cells[row - 1]}"
+    allowed = "steps of one length, to half of the last printed digit"
+    remedy = "Samples are missing or doubled there: export each regular stretch as a file of its own."
+    return refusal(path, found, allowed, remedy)
+
+
+def _clock(path: Path, shortest_s: float, longest_s: float) -> Clock:
+    if shortest_s <= 0:
+        found = f"times in column {TIME_COLUMN} too coarse to tell the rate"
+        remedy = "Print more digits, or leave the column away and declare `load: {rate_hz: ...}`."
+        raise refusal(path, found, "more digits than one sample needs", remedy)
+    return Clock(slowest_hz=1 / Fraction(longest_s), fastest_hz=1 / Fraction(shortest_s))
