@@ -350,7 +350,7 @@ class _Signal(Block):
     )
     load: Load | None = Field(
         default=None,
-        description="Rate and unit of delimited files for this signal; absent: the study's own load.",
+        description="Rate and unit of delimited files for this signal; absent keys: as in the study's load.",
         json_schema_extra=_told("", "a load block"),
     )
     quality: QualityLimits = Field(
@@ -533,7 +533,7 @@ class StudyDescription(Block):
     )
     load: Load = Field(
         default=Load(),
-        description="Rate and unit of delimited files, for all signals that have no load of their own.",
+        description="Rate and unit of delimited files, where a signal's own load does not say otherwise.",
         json_schema_extra=_told("", "a load block"),
     )
     signals: Annotated[dict[Name, Annotated[AnySignal, Field(discriminator="kind")]], Field(min_length=1)] = (
@@ -548,10 +548,10 @@ class StudyDescription(Block):
         json_schema_extra=_told("", "a list of questions, each name once"),
     )
 
-    @model_validator(mode="after")
-    def _question_names_are_unique(self) -> StudyDescription:
-        names = [question.name for question in self.questions]
-        twice = sorted({name for name in names if names.count(name) > 1})
-        if twice:
-            raise refusal("questions", f"{', '.join(twice)} twice", "each name once", "Rename one of them.")
-        return self
+    def load_of(self, signal: AnySignal) -> Load:
+        """Return what is declared of delimited files: key by key, the signal's load before the study's."""
+        own = signal.load or Load()
+        return Load(
+            rate_hz=self.load.rate_hz if own.rate_hz is None else own.rate_hz,
+            unit=self.load.unit if own.unit is None else own.unit,
+        )

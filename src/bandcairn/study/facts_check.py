@@ -1,0 +1,292 @@
+"""Check a study against what its raw files say of themselves, before any sample is read."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from bandcairn.errors import Problem, UnknownUnitError
+from bandcairn.study.faults import STUDY_FILE, Fault, listed, suggestion
+from bandcairn.study.models import AnnotationSegments
+from bandcairn.study.signal_checks import check_nyquist
+from bandcairn.units import KNOWN_UNITS, microvolts_per
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator, Mapping
+
+    from bandcairn.signal import ChannelFacts, FileFacts
+    from bandcairn.study.description import LoadedStudy
+    from bandcairn.study.models import AnySignal, Load
+    from bandcairn.study.tables import RecordingRow
+
+_SAME = 1e-9  # relative: a declared decimal rate and the exact fraction of a file differ by rounding alone
+_SLACK_S = 1e-6  # a stretch may end this much beyond the last sample: tables are written with rounded times
+
+
+@dataclass(frozen=True, slots=True)
+class _Case:
+    """One signal in one recording."""
+
+    study: LoadedStudy
+    row: RecordingRow
+    name: str
+    signal: AnySignal
+    facts: FileFacts
+
+    @property
+    def load(self) -> Load:
+        """What is declared of delimited files."""
+        return self.study.description.load_of(self.signal)
+
+    def channels(self) -> tuple[ChannelFacts, ...]:
+        """Return the channels of the signal that the file holds, in the order of the signal."""
+        first: dict[str, ChannelFacts] = {}
+        for channel in self.facts.channels:
+            first.setdefault(channel.label, channel)
+        return tuple(first[label] for label in self.signal.channels if label in first)
+
+    def rate_hz(self, channel: ChannelFacts) -> float | None:
+        """Return the rate of a channel: the file's own, else the declared one."""
+        return self.load.rate_hz if channel.rate_hz is None else float(channel.rate_hz)
+
+    def refuse(self, *path: str | int, found: str, allowed: str, remedy: str) -> Problem:
+        """Return a problem of the raw file, with the key of study.yaml that it does not fit."""
+        fault = Fault(("signals", self.name, *path), found, allowed, remedy)
+        placed = fault.placed(self.study.lines)
+        where = f"recording {self.row.recording}"
+        remedy = f"{remedy} ({STUDY_FILE}, {placed.where})"
+        return Problem(self.row.file, where, placed.field, found, allowed, remedy)
+
+
+def check_facts(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> tuple[Problem, ...]:
+    """Check a study against its files.
+
+    Parameters
+    ----------
+    study : LoadedStudy
+        The study.
+    facts : Mapping of str to FileFacts
+        By recording; recordings whose file cannot be read are absent.
+
+    Returns
+    -------
+    tuple of Problem
+        Every problem, in the order of the recordings table; empty where all fits.
+    """
+    problems: list[Problem] = []
+    for row in study.recordings:
+        if row.recording not in facts:
+            continue
+        problems += _check_stretch(study, row, facts[row.recording])
+        for name, signal in study.description.signals.items():
+            problems += _check_case(_Case(study, row, name, signal, facts[row.recording]))
+    for name, signal in study.description.signals.items():
+        cases = [
+            _Case(study, row, name, signal, facts[row.recording])
+            for row in study.recordings
+            if row.recording in facts
+        ]
+        problems += _check_common_rate(cases)
+    problems += _check_annotations(study, facts)
+    return tuple(dict.fromkeys(problems))
+
+
+def _check_case(case: _Case) -> Iterator[Problem]:
+    yield from _check_channels(case)
+    yield from _check_rates(case)
+    yield from _check_units(case)
+    yield from _check_epoch(case)
+
+
+def _check_channels(case: _Case) -> Iterator[Problem]:
+    labels = [channel.label for channel in case.facts.channels]
+    for index, wanted in enumerate(case.signal.channels):
+        count = labels.count(wanted)
+        if count == 0:
+            remedy = suggestion(wanted, labels, "Correct the name, or leave the recording out.")
+            allowed = f"a channel of the file: {listed(labels)}"
+            yield case.refuse("channels", index, found=f"no channel {wanted}", allowed=allowed, remedy=remedy)
+        elif count > 1:
+            found = f"{count} channels named {wanted}"
+            remedy = "Rename one in a copy of the file: which is meant cannot be told."
+            yield case.refuse("channels", index, found=found, allowed="each channel once", remedy=remedy)
+
+
+def _check_rates(case: _Case) -> Iterator[Problem]:
+    channels = case.channels()
+    unknown = [channel.label for channel in channels if case.rate_hz(channel) is None]
+    if unknown:
+        remedy = "Declare load: {rate_hz: ...}, or give the file a time_s column."
+        found = f"no rate for {listed(unknown)}"
+        yield case.refuse("load", "rate_hz", found=found, allowed="a sampling rate in Hz", remedy=remedy)
+    yield from _check_declared_rate(case, channels)
+    rates = {channel.label: rate for channel in channels if (rate := case.rate_hz(channel)) is not None}
+    if len(set(rates.values())) > 1:
+        found = listed(f"{label} at {rate:g} Hz" for label, rate in rates.items())
+        remedy = "Make two signals of them, one for each rate."
+        yield case.refuse("channels", found=found, allowed="one rate a signal", remedy=remedy)
+    elif rates:
+        yield from _check_rate(case, next(iter(rates.values())))
+
+
+def _check_declared_rate(case: _Case, channels: tuple[ChannelFacts, ...]) -> Iterator[Problem]:
+    declared = case.load.rate_hz
+    own = {float(channel.rate_hz) for channel in channels if channel.rate_hz is not None}
+    other = [rate for rate in sorted(own) if declared and not math.isclose(rate, declared, rel_tol=_SAME)]
+    if declared is not None and other:
+        found = f"{declared:g} Hz declared, but the file states {listed(f'{rate:g} Hz' for rate in other)}"
+        remedy = "Delete load.rate_hz, or declare it only for a signal of delimited files without time_s."
+        yield case.refuse("load", "rate_hz", found=found, allowed="the rate of the file", remedy=remedy)
+
+
+def _check_rate(case: _Case, rate_hz: float) -> Iterator[Problem]:
+    """Yield what the one rate of a signal does not allow."""
+    resample = case.signal.resample
+    if resample is None:
+        for fault in check_nyquist(case.name, case.signal, rate_hz, f"of the file, {rate_hz:g} Hz"):
+            told = {"found": fault.found, "allowed": fault.allowed, "remedy": fault.remedy}
+            yield case.refuse(*fault.path[2:], **told)
+    elif resample.rate_hz > rate_hz * (1 + _SAME):
+        remedy = "Lower resample.rate_hz: a higher rate adds no information."
+        found = f"{resample.rate_hz:g} Hz"
+        allowed = f"at most the rate of the file, {rate_hz:g} Hz"
+        yield case.refuse("resample", "rate_hz", found=found, allowed=allowed, remedy=remedy)
+
+
+def _check_units(case: _Case) -> Iterator[Problem]:
+    declared = case.load.unit
+    for channel in case.channels():
+        unit = declared if channel.unit is None else channel.unit
+        scale = _microvolts(unit)
+        if scale is None:
+            found = f"{unit!r} for {channel.label}" if unit else f"no unit for {channel.label}"
+            remedy = (
+                "Declare load: {unit: ...}."
+                if channel.unit is None
+                else "Correct a copy of the file's header."
+            )
+            yield case.refuse(
+                "load", "unit", found=found, allowed=f"one of {listed(KNOWN_UNITS)}", remedy=remedy
+            )
+        elif declared is not None and scale != _microvolts(declared):
+            found = f"{declared} declared, but the file states {unit} for {channel.label}"
+            remedy = "Delete load.unit, or declare it only for a signal of delimited files."
+            yield case.refuse("load", "unit", found=found, allowed="the unit of the file", remedy=remedy)
+
+
+def _microvolts(unit: str | None) -> float | None:
+    try:
+        return microvolts_per(unit or "")
+    except UnknownUnitError:
+        return None
+
+
+def _check_stretch(study: LoadedStudy, row: RecordingRow, facts: FileFacts) -> Iterator[Problem]:
+    """Yield the times of the tables that lie outside the file, or outside the stretch used of it."""
+    duration_s = _duration_s(study, facts)
+    if duration_s is None:
+        return
+    for column, value in (("start_s", row.start_s), ("stop_s", row.stop_s)):
+        if value is not None and value > duration_s + _SLACK_S:
+            where = f"row {row.row}, column {column}"
+            allowed = f"at most {duration_s:g} s, the length of {row.file}"
+            yield Problem(
+                study.description.recordings, where, column, f"{value:g} s", allowed, "Correct the cell."
+            )
+    first_s = row.start_s or 0.0
+    last_s = duration_s if row.stop_s is None else min(row.stop_s, duration_s)
+    for segment in study.segments:
+        outside = segment.start_s < first_s - _SLACK_S or segment.stop_s > last_s + _SLACK_S
+        if segment.recording == row.recording and outside:
+            column = "stop_s" if segment.stop_s > last_s + _SLACK_S else "start_s"
+            where = f"row {segment.row}, column {column}"
+            found = f"{segment.segment} from {segment.start_s:g} to {segment.stop_s:g} s"
+            allowed = f"within what is used of {row.file}, {first_s:g} to {last_s:g} s"
+            remedy = "Correct the segment, or the recording's start_s and stop_s."
+            yield Problem(str(study.segments_file), where, column, found, allowed, remedy)
+
+
+def _duration_s(study: LoadedStudy, facts: FileFacts) -> float | None:
+    """Return the length of a file by its longest channel; None where no channel has a rate."""
+    durations = []
+    for channel in facts.channels:
+        declared = study.description.load.rate_hz
+        rate_hz = declared if channel.rate_hz is None else float(channel.rate_hz)
+        if rate_hz:
+            durations.append(channel.n_samples / rate_hz)
+    return max(durations, default=None)
+
+
+def _check_epoch(case: _Case) -> Iterator[Problem]:
+    longest_s = max(_stretches_s(case), default=None)
+    length_s = case.signal.epoch.length_s
+    if longest_s is not None and length_s > longest_s + _SLACK_S:
+        allowed = f"at most {longest_s:g} s, the longest stretch of this recording"
+        remedy = "Shorten the epoch, or leave the recording out."
+        yield case.refuse("epoch", "length_s", found=f"{length_s:g} s", allowed=allowed, remedy=remedy)
+
+
+def _stretches_s(case: _Case) -> list[float]:
+    """Return the lengths of the stretches that a signal uses of a recording; empty where the rate is unknown."""
+    durations = [c.n_samples / rate for c in case.channels() if (rate := case.rate_hz(c))]
+    if not durations:
+        return []
+    segments = _segments(case)
+    used = {
+        segment: (start_s, stop_s)
+        for segment, start_s, stop_s in segments
+        if case.signal.segments is None or segment in case.signal.segments
+    }
+    if segments and case.signal.segments != ():
+        return [stop_s - start_s for start_s, stop_s in used.values()]
+    stop_s = min(min(durations), math.inf if case.row.stop_s is None else case.row.stop_s)
+    return [stop_s - (case.row.start_s or 0.0)]
+
+
+def _segments(case: _Case) -> list[tuple[str, float, float]]:
+    """Return name, start and stop of each segment that a recording declares."""
+    declared = case.study.description.segments
+    if isinstance(declared, AnnotationSegments):
+        return [
+            (note.text, note.onset_s, note.onset_s + note.duration_s)
+            for note in case.facts.annotations
+            if note.text in declared.annotations
+        ]
+    rows = (row for row in case.study.segments if row.recording == case.row.recording)
+    return [(row.segment, row.start_s, row.stop_s) for row in rows]
+
+
+def _check_common_rate(cases: list[_Case]) -> Iterator[Problem]:
+    """Yield a fault where the recordings of a signal have several rates and nothing makes them one."""
+    rates: dict[float, str] = {}
+    for case in cases:
+        for channel in case.channels()[:1]:
+            rate_hz = case.rate_hz(channel)
+            if rate_hz is not None:
+                rates.setdefault(rate_hz, case.row.recording)
+    if len(rates) > 1 and cases[0].signal.resample is None:
+        found = listed(f"{rate:g} Hz ({recording})" for rate, recording in sorted(rates.items()))
+        remedy = f"Add resample: {{rate_hz: {min(rates):g}}} or less."
+        path = ("signals", cases[0].name, "resample")
+        fault = Fault(path, found, "one rate for all recordings, hence one frequency grid", remedy)
+        yield fault.placed(cases[0].study.lines)
+
+
+def _check_annotations(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> Iterator[Problem]:
+    """Yield the declared annotation texts that no file holds, or that mark no stretch."""
+    declared = study.description.segments
+    if not isinstance(declared, AnnotationSegments) or not facts:
+        return
+    notes = [note for file in facts.values() for note in file.annotations]
+    texts = tuple(dict.fromkeys(note.text for note in notes))
+    for index, text in enumerate(declared.annotations):
+        path = ("segments", "annotations", index)
+        if text not in texts:
+            allowed = f"a text of the files' annotations: {listed(texts[:20])}"
+            remedy = suggestion(text, texts, "Correct the text.")
+            yield Fault(path, text, allowed, remedy).placed(study.lines)
+        elif not any(note.duration_s > 0 for note in notes if note.text == text):
+            found = f"{text}, which lasts 0 s wherever it stands"
+            remedy = "Declare the stretches in a segments table."
+            yield Fault(path, found, "an annotation with a duration", remedy).placed(study.lines)
