@@ -79,7 +79,8 @@ class Epochs:
     @property
     def kept(self) -> NDArray[np.bool_]:
         """True where a channel's epoch is used, shape (n_channels, n_epochs)."""
-        return self.reason == KEPT
+        kept: NDArray[np.bool_] = self.reason == KEPT
+        return kept
 
 
 @dataclass(frozen=True, slots=True)
@@ -101,11 +102,12 @@ def cut_epochs(
 ) -> Epochs:
     """Cut fixed windows out of every segment, never across the end of a run or of a segment.
 
-    A window holds L = round(length_s * rate) samples, and the next one begins round(L * (1 - overlap)) samples
-    later (halves go to the even number). A segment holds the samples from the first one at or after its start
-    to the last one strictly before its stop: of two segments that share a border, one alone holds the sample
-    on it. Seconds are read as the decimal numbers that were written, and all of this is computed in fractions:
-    a border at 30 s is exactly sample 7680 at 256 Hz.
+    A window holds L = round(length_s * rate) samples, and the next one begins round(L * (1 - overlap))
+    samples later (halves go to the even number), so n samples hold floor((n - L) / step) + 1 windows. A
+    segment holds the samples from the first one at or after its start to the last one strictly before its
+    stop: of two segments that share a border, one alone holds the sample on it. Seconds are read as the
+    decimal numbers that were written, and all of this is computed in fractions: a border at 30 s is exactly
+    sample 7680 at 256 Hz.
 
     Parameters
     ----------
@@ -186,8 +188,9 @@ def _window_samples(rate_hz: Fraction, length_s: float, overlap: float) -> tuple
     step = round(length * (1 - _seconds(overlap)))
     if length < 1 or step < 1:
         raise StepError(
-            f"epoch: windows of {length_s:g} s with an overlap of {overlap:g} are {length} samples long and {step} "
-            f"apart at {float(rate_hz):g} Hz; allowed: at least 1 of each. Choose longer windows or less overlap."
+            f"epoch: windows of {length_s:g} s with an overlap of {overlap:g} are {length} samples long "
+            f"and {step} apart at {float(rate_hz):g} Hz; allowed: at least 1 of each. Choose longer "
+            "windows or less overlap."
         )
     return length, step
 
@@ -201,8 +204,8 @@ def _check_segments(segments: tuple[Segment, ...]) -> None:
     for segment in segments:
         if not -math.inf < segment.start_s < segment.stop_s < math.inf:
             raise StepError(
-                f"epoch: segment {segment.name!r} was found to run from {segment.start_s} to {segment.stop_s} s; "
-                "allowed: a stop after the start."
+                f"epoch: segment {segment.name!r} runs from {segment.start_s} to {segment.stop_s} s; "
+                "allowed: a stop after the start. Correct the table of segments."
             )
 
 
@@ -211,8 +214,8 @@ def _check_limits(reject: Reject | None) -> None:
         return
     if reject.flat_uv >= reject.peak_to_peak_uv:
         raise StepError(
-            f"epoch: found flat_uv {reject.flat_uv:g} and peak_to_peak_uv {reject.peak_to_peak_uv:g}; allowed: "
-            "flat_uv below peak_to_peak_uv, or no epoch is left."
+            f"epoch: found flat_uv {reject.flat_uv:g} and peak_to_peak_uv {reject.peak_to_peak_uv:g}; "
+            "allowed: flat_uv below peak_to_peak_uv, or no epoch is left. Correct one of them."
         )
 
 
@@ -237,19 +240,20 @@ def _held(run: Run, rate_hz: Fraction, segment: Segment | None) -> tuple[int, in
 
 
 def _start_times(stretches: tuple[_Stretch, ...], rate_hz: Fraction, step: int) -> NDArray[np.float64]:
-    """Return the time of every window's first sample; each is rounded once, from its exact value."""
-    return np.array(
-        [
-            float(part.run.start_s + (part.first - part.run.first + i * step) / rate_hz)
-            for part in stretches
-            for i in range(part.count)
-        ],
-        dtype=np.float64,
-    )
+    """Return the time of every window's first sample."""
+    times: list[float] = []
+    for part in stretches:
+        start = part.run.start_s + (part.first - part.run.first) / rate_hz
+        spacing = step / rate_hz
+        # Over a common denominator, each time is one division of whole numbers: rounded once, and quickly.
+        below = math.lcm(start.denominator, spacing.denominator)
+        above, more = int(start * below), int(spacing * below)
+        times.extend((above + i * more) / below for i in range(part.count))
+    return np.array(times, dtype=np.float64)
 
 
 def _windows(samples: NDArray[np.float64], length: int, step: int) -> NDArray[np.float64]:
-    """Return overlapping windows over the last axis as a read-only view, shape (n_channels, n_windows, length)."""
+    """View the last axis as overlapping windows, read-only, shape (n_channels, n_windows, length)."""
     return np.lib.stride_tricks.sliding_window_view(samples, length, axis=-1)[:, ::step]
 
 
@@ -262,13 +266,14 @@ def _ranges(samples: NDArray[np.float64], length: int, step: int) -> NDArray[np.
     blocks = samples.reshape(len(samples), -1, block)
     largest = _windows(blocks.max(axis=-1), length // block, step // block).max(axis=-1)
     smallest = _windows(blocks.min(axis=-1), length // block, step // block).min(axis=-1)
-    return largest - smallest
+    return np.asarray(largest - smallest)
 
 
 def _reasons(peak_to_peak_uv: NDArray[np.float64], reject: Reject | None) -> NDArray[np.int8]:
     """Return why each epoch of each channel is dropped, or 0.
 
-    With scope "epoch", a channel that passes by itself takes the reason of those that fail: too large if any is.
+    With scope "epoch", a channel that passes by itself takes the reason of those that fail: too large if any
+    is.
     """
     reason = np.zeros(peak_to_peak_uv.shape, np.int8)
     if reject is None:

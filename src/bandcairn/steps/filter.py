@@ -84,7 +84,7 @@ class EffectiveCutoff:
 
 
 def sections(stage: FilterStage, rate_hz: float) -> NDArray[np.float64]:
-    """Design a stage at a sampling rate, by the pre-warped bilinear transform of Butterworth's prototype [1]_.
+    """Design a stage at a sampling rate: Butterworth's prototype [1]_ by the pre-warped bilinear transform.
 
     Parameters
     ----------
@@ -102,8 +102,8 @@ def sections(stage: FilterStage, rate_hz: float) -> NDArray[np.float64]:
     Raises
     ------
     StepError
-        If a cut-off is not above 0 and below 0.98 of Nyquist, their number or order is wrong, the design is not
-        available, or a pole does not lie inside the unit circle.
+        If a cut-off is not above 0 and below 0.98 of Nyquist, their number or order is wrong, the design is
+        not available, or a pole does not lie inside the unit circle.
     """
     from scipy.signal import butter
 
@@ -113,8 +113,8 @@ def sections(stage: FilterStage, rate_hz: float) -> NDArray[np.float64]:
     radius = _slowest_radius(sos)
     if not radius < 1:
         raise StepError(
-            f"filter: {_named(stage)} has a pole at radius {radius:.12g} at {rate_hz:g} Hz, so it is unstable; allowed: "
-            "below 1. Choose a lower order, a higher cut-off, or resample to a lower rate first."
+            f"filter: {_named(stage)} has a pole at radius {radius:.12g} at {rate_hz:g} Hz and is unstable; "
+            "allowed: below 1. Choose a lower order, a higher cut-off, or resample to a lower rate first."
         )
     return sos
 
@@ -122,13 +122,13 @@ def sections(stage: FilterStage, rate_hz: float) -> NDArray[np.float64]:
 def apply_stages(signal: Signal, stages: tuple[FilterStage, ...]) -> Signal:
     """Filter a signal, every gap-free run by itself.
 
-    Neighbouring stages of the same phase run as one cascade: zero-phase ones share one forward and one backward
-    pass. The response is the same, for filters commute; so the order of the stages matters only where the phase
-    changes, and there only at the edges.
+    Neighbouring stages of the same phase run as one cascade: zero-phase ones share one forward and one
+    backward pass, which halves the passes. The response is the same, for filters commute: the order of the
+    stages tells only where the phase changes, and there only near the edges of a run.
 
-    A zero-phase cascade extends each run at both ends by its mirror image turned about the end sample, as far as
-    the slowest pole needs to decay to 1 % [3]_. Every pass begins in the state that the first sample would have
-    left had it lasted for ever, so that an offset does not ring.
+    A zero-phase cascade extends each run at both ends by its mirror image turned about the end sample, as far
+    as the slowest pole needs to decay to 1 % [3]_. Every pass begins in the state that the first sample would
+    have left had it lasted for ever: neither an offset nor the step to the first sample rings.
 
     Parameters
     ----------
@@ -166,7 +166,7 @@ def apply_stages(signal: Signal, stages: tuple[FilterStage, ...]) -> Signal:
 def response(
     stages: tuple[FilterStage, ...], rate_hz: float, frequencies_hz: ArrayLike
 ) -> NDArray[np.float64]:
-    """Return the amplitude gain of a chain as applied: |H|^2 of each zero-phase stage, |H| of each causal one.
+    """Return the amplitude gain of a chain as applied: |H|^2 of zero-phase stages, |H| of causal ones.
 
     Parameters
     ----------
@@ -269,8 +269,8 @@ def _check_length(n_samples: int, cascade: _Cascade, rate_hz: float) -> None:
     if cascade.phase == "zero" and n_samples <= cascade.settling:
         raise StepError(
             f"filter: found a gap-free run of {n_samples / rate_hz:.3f} s; needed: more than "
-            f"{cascade.settling / rate_hz:.3f} s, in which this filter settles. Raise the lowest cut-off, lower the "
-            "order, or leave the run out."
+            f"{cascade.settling / rate_hz:.3f} s, in which this filter settles. Raise the lowest cut-off, "
+            "lower the order, or leave the run out."
         )
 
 
@@ -279,9 +279,8 @@ def _check_stage(stage: FilterStage, rate_hz: float) -> None:
     wanted = 2 if stage.type in {"bandpass", "bandstop"} else 1
     increasing = all(low < high for low, high in zip(stage.cutoff_hz, stage.cutoff_hz[1:], strict=False))
     if len(stage.cutoff_hz) != wanted or not increasing or stage.order < 1:
-        raise StepError(
-            f"filter: found {_named(stage)}; allowed: {wanted} increasing cut-off(s) and an order of at least 1."
-        )
+        cutoffs = "one cut-off" if wanted == 1 else "two increasing cut-offs"
+        raise StepError(f"filter: found {_named(stage)}; allowed: {cutoffs} and an order of at least 1.")
     if stage.design != "butterworth":
         raise StepError(
             f"filter: found design {stage.design!r}, which is not available yet; allowed: butterworth."
@@ -289,8 +288,8 @@ def _check_stage(stage: FilterStage, rate_hz: float) -> None:
     limit_hz = LARGEST_SHARE_OF_NYQUIST * rate_hz / 2
     if not all(0 < cutoff_hz < limit_hz for cutoff_hz in stage.cutoff_hz):
         raise StepError(
-            f"filter: found {_named(stage)} for a signal at {rate_hz:g} Hz; allowed: cut-offs above 0 and below "
-            f"{limit_hz:g} Hz (0.98 of Nyquist). Lower the cut-off or keep a higher rate."
+            f"filter: found {_named(stage)} for a signal at {rate_hz:g} Hz; allowed: cut-offs above 0 and "
+            f"below {limit_hz:g} Hz (0.98 of Nyquist). Lower the cut-off or keep a higher rate."
         )
 
 
@@ -318,7 +317,7 @@ def _gain(
 def _squared(polynomial: NDArray[np.float64], angle: NDArray[np.float64]) -> NDArray[np.float64]:
     """Return |c0 + c1 z + c2 z^2|^2 on the unit circle.
 
-    Written about z = 1, where the zeros of a high-pass lie: near 0 Hz plain powers of z lose all their digits.
+    Written about z = 1, where the zeros of a high-pass lie: near 0 Hz plain powers of z cancel to nothing.
     """
     c0, c1, c2 = polynomial
     in_phase = (c0 + c1 + c2) - 2 * (c0 + c2) * np.sin(angle / 2) ** 2
@@ -326,7 +325,7 @@ def _squared(polynomial: NDArray[np.float64], angle: NDArray[np.float64]) -> NDA
 
 
 def _brackets(stage: FilterStage, rate_hz: float) -> tuple[tuple[float, float], ...]:
-    """Return, for each cut-off, a frequency that passes whole and one that is stopped; between them gain falls."""
+    """Return a frequency that passes and one that is stopped for each cut-off; the gain falls between."""
     nyquist_hz = rate_hz / 2
     if stage.type == "lowpass":
         return ((0.0, nyquist_hz),)

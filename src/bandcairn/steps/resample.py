@@ -32,7 +32,7 @@ ATTENUATION_LIMIT_DB = 80.0
 # 0.9 .. 1, above the pass-band: so the stop-band need not begin at Nyquist, and the filter is half as long.
 _PASS_SHARE = 0.9
 _STOP_SHARE = 1.1
-# Kaiser's formulas miss by a decibel or two, and giving every phase a gain of exactly 1 costs up to as much again.
+# Kaiser's formulas miss by some tenths of a decibel; so does setting the gain of every phase to exactly 1.
 _DESIGN_ATTENUATION_DB = 85.0
 
 # One product of matrices gives this many outputs a row; measured: smaller blocks leave the processor's vector
@@ -84,21 +84,24 @@ class _BlockFilter:
 
     @property
     def n_outputs(self) -> int:
-        return int(self.matrix.shape[1])
+        """Outputs per row."""
+        n_outputs: int = self.matrix.shape[1]
+        return n_outputs
 
     @property
     def chunk_samples(self) -> int:
         """Samples that `rows` rows reach over, rounded up to whole hops."""
-        return (self.rows - 1 - (-self.matrix.shape[0] // self.hop)) * self.hop
+        return (self.rows - 1 + math.ceil(len(self.matrix) / self.hop)) * self.hop
 
 
 def resample(signal: Signal, rate_hz: Fraction) -> Signal:
     """Bring a signal to a lower sampling rate, run by run, without delay.
 
-    Each run is extended beyond both ends by its own mirror image, turned about the end sample (odd extension):
-    an offset or a slow drift then goes on across the edge, where zeros would drag the first samples down.
-    Removing a straight line per run would do the same for an offset, but ties the line to two noisy samples.
-    Within half a filter (about 26 new samples) of an edge the output rests partly on extended samples.
+    Each run is extended beyond both ends by its own mirror image, turned about the end sample (odd
+    extension): an offset or a slow drift then goes on across the edge, where zeros would drag the first
+    samples down. A straight line taken off and added back would do the same for an offset, but rest the
+    whole run on two noisy samples. Within half a filter (about 27 new samples) of an edge the output rests
+    partly on extended samples.
 
     Parameters
     ----------
@@ -158,9 +161,9 @@ def anti_alias(rate_hz: Fraction, target_hz: Fraction) -> AntiAlias:
     ripple_db, attenuation_db = _measured_response(taps, up, down)
     if ripple_db >= RIPPLE_LIMIT_DB or attenuation_db <= ATTENUATION_LIMIT_DB:
         raise StepError(
-            f"resample: the anti-alias filter from {rate_hz} to {target_hz} Hz has {ripple_db:.4f} dB of ripple and "
-            f"{attenuation_db:.1f} dB of attenuation; allowed: below {RIPPLE_LIMIT_DB}, above {ATTENUATION_LIMIT_DB}. "
-            "Choose a simpler ratio of the two rates."
+            f"resample: the anti-alias filter from {rate_hz} to {target_hz} Hz has {ripple_db:.4f} dB of "
+            f"ripple and {attenuation_db:.1f} dB of attenuation; allowed: below {RIPPLE_LIMIT_DB} and above "
+            f"{ATTENUATION_LIMIT_DB}. Choose a simpler ratio of the two rates."
         )
     nyquist_hz = float(target_hz) / 2
     return AntiAlias(
@@ -172,16 +175,16 @@ def _checked_ratio(rate_hz: Fraction, target_hz: Fraction) -> Fraction:
     """Return target / rate, or refuse it with the nearest rates that are allowed."""
     if not 0 < target_hz < rate_hz:
         raise StepError(
-            f"resample: found a new rate of {_hz(target_hz)} for a signal at {_hz(rate_hz)}; allowed: above 0, up to "
-            "the rate of the signal. Upsampling adds no information: leave the rate as it is."
+            f"resample: found a new rate of {_hz(target_hz)} for a signal at {_hz(rate_hz)}; allowed: above "
+            "0, up to the rate of the signal. Upsampling adds no information: leave the rate as it is."
         )
     ratio = target_hz / rate_hz
     if max(ratio.numerator, ratio.denominator) > LARGEST_FACTOR:
         near = {ratio.limit_denominator(limit) for limit in (100, LARGEST_FACTOR)} - {Fraction(0)}
         choices = " or ".join(f"{_hz(rate_hz * simple)} ({simple} of the rate)" for simple in sorted(near))
         raise StepError(
-            f"resample: {_hz(target_hz)} is {ratio} of the signal's {_hz(rate_hz)}; allowed: a ratio of whole numbers "
-            f"up to {LARGEST_FACTOR}. Nearest simple rates: {choices or 'none'}."
+            f"resample: {_hz(target_hz)} is {ratio} of the signal's {_hz(rate_hz)}; allowed: a ratio of "
+            f"whole numbers up to {LARGEST_FACTOR}. Nearest simple rates: {choices or 'none'}."
         )
     return ratio
 
@@ -219,7 +222,7 @@ def _measured_response(taps: NDArray[np.float64], up: int, down: int) -> tuple[f
 
 @lru_cache(maxsize=8)
 def _block_filter(rate_hz: Fraction, target_hz: Fraction) -> _BlockFilter:
-    """Lay the taps out as a Toeplitz matrix: output k sums sample n times tap k * down - n * up (section 4.6)."""
+    """Lay the taps out as a Toeplitz matrix: output k sums sample n times tap k * down - n * up [2]_."""
     design = anti_alias(rate_hz, target_hz)
     up, down, half = design.up, design.down, len(design.taps) // 2
     n_outputs = up * math.ceil(_OUTPUTS_PER_BLOCK / up)
@@ -248,34 +251,51 @@ def _filter_run(samples: NDArray[np.float64], block: _BlockFilter, target: NDArr
     Every product has the same shape, whatever the length of the run, so that a sample's last bit does not
     depend on where the recording ends.
     """
-    chunk_outputs = block.rows * block.n_outputs
-    for first in range(0, len(target), chunk_outputs):
+    last, spare = np.empty((2, block.rows, block.n_outputs))
+    for first in range(0, len(target), last.size):
         start = first // block.n_outputs * block.hop - block.lead
         rows = _stretch(samples, start, start + block.chunk_samples).reshape(-1, block.hop)
-        outputs = _multiply(rows, block).reshape(-1)
-        target[first : first + chunk_outputs] = outputs[: len(target) - first]
+        outputs = target[first : first + last.size]
+        if len(outputs) == last.size:
+            _multiply(rows, block, outputs.reshape(last.shape), spare)
+        else:
+            _multiply(rows, block, last, spare)
+            outputs[:] = last.reshape(-1)[: len(outputs)]
 
 
-def _multiply(rows: NDArray[np.float64], block: _BlockFilter) -> NDArray[np.float64]:
-    """Multiply overlapping rows by the matrix, one hop of its height at a time.
+def _multiply(
+    rows: NDArray[np.float64],
+    block: _BlockFilter,
+    outputs: NDArray[np.float64],
+    spare: NDArray[np.float64],
+) -> None:
+    """Fill `outputs` with overlapping rows times the matrix, one hop of its height at a time.
 
     Rows that overlap in memory are no matrix to BLAS; neighbouring whole hops are.
     """
-    outputs = rows[: block.rows] @ block.matrix[: block.hop]
+    np.matmul(rows[: block.rows], block.matrix[: block.hop], out=outputs)
     for ahead, top in enumerate(range(block.hop, block.matrix.shape[0], block.hop), start=1):
         part = block.matrix[top : top + block.hop]
-        outputs += rows[ahead : ahead + block.rows, : part.shape[0]] @ part
-    return outputs
+        np.matmul(rows[ahead : ahead + block.rows, : part.shape[0]], part, out=spare)
+        outputs += spare
 
 
 def _stretch(samples: NDArray[np.float64], start: int, stop: int) -> NDArray[np.float64]:
-    """Return samples start .. stop of a run, oddly extended beyond its ends as often as needed."""
+    """Return samples start .. stop of a run, extended where they lie beyond its ends."""
     n = len(samples)
     if start >= 0 and stop <= n:
         return samples[start:stop]
+    before = _beyond(samples, np.arange(start, min(0, stop)))
+    after = _beyond(samples, np.arange(max(n, start), stop))
+    return np.concatenate([before, samples[max(0, start) : stop], after])
+
+
+def _beyond(samples: NDArray[np.float64], index: NDArray[np.int64]) -> NDArray[np.float64]:
+    """Return the odd extension of a run at indices outside it, turned about its ends as often as needed."""
+    n = len(samples)
     if n == 1:
-        return np.full(stop - start, samples[0])
-    turn, place = np.divmod(np.arange(start, stop), 2 * (n - 1))
+        return np.full(len(index), samples[0])
+    turn, place = np.divmod(index, 2 * (n - 1))
     mirrored = 2 * samples[-1] - samples[np.minimum(2 * (n - 1) - place, n - 1)]
     once = np.where(place < n, samples[np.minimum(place, n - 1)], mirrored)
-    return once + turn * (2 * (samples[-1] - samples[0]))
+    return np.asarray(once + turn * (2 * (samples[-1] - samples[0])))

@@ -85,8 +85,9 @@ def power_density(
     window : {"hann", "hamming", "blackman", "boxcar"}
         Taper of each segment.
     segment_s, overlap : float or None
-        Length of a segment in seconds, rounded to whole samples, and the share that neighbours have in common;
-        both are required by welch and refused by periodogram. Samples after the last whole segment are not used.
+        Length of a segment in seconds, rounded to whole samples, and the share that neighbours have in
+        common; both are required by welch and refused by periodogram. Samples after the last whole segment
+        are not used.
     detrend : {"none", "constant", "linear"}
         What is taken off each segment: nothing, its mean, or its least-squares line.
 
@@ -106,7 +107,7 @@ def power_density(
 
 
 def window(name: Window, n: int) -> NDArray[np.float64]:
-    """Return a window of n samples in its periodic (DFT-even) form: the sample that would close it is left out.
+    """Return a window of n samples in its periodic (DFT-even) form, without the sample that would close it.
 
     Parameters
     ----------
@@ -144,14 +145,15 @@ def _segments(
     else:
         if segment_s is None or overlap is None or not 0 <= overlap < 1:
             raise StepError(
-                f"spectrum: found segment_s {segment_s} and overlap {overlap}; welch needs a segment in seconds and "
-                "an overlap of 0 up to, but below, 1."
+                f"spectrum: found segment_s {segment_s} and overlap {overlap}; welch needs a segment in "
+                "seconds and an overlap of 0 up to, but below, 1."
             )
         length, step = _samples(segment_s, rate_hz, overlap)
     if not 2 <= length <= n:
         raise StepError(
             f"spectrum: found a segment of {length} samples ({length / rate_hz:g} s) in a stretch of {n} "
-            f"({n / rate_hz:g} s); allowed: 2 samples up to the stretch. Choose longer epochs or shorter segments."
+            f"({n / rate_hz:g} s); allowed: 2 samples up to the stretch. Choose longer epochs or shorter "
+            "segments."
         )
     return _Segments(length, step, segment_count(n, length, step))
 
@@ -177,7 +179,9 @@ def _averaged(
     power *= 1 / (rate_hz * np.dot(weights, weights) * cut.count)
     # An even length puts its last bin on Nyquist; an odd one has none there.
     power[:, 1 : (cut.length + 1) // 2] *= 2
-    return Spectrum(np.arange(n_freq) * (rate_hz / cut.length), power.reshape(*leading, n_freq))
+    return Spectrum(
+        np.arange(n_freq, dtype=np.float64) * (rate_hz / cut.length), power.reshape(*leading, n_freq)
+    )
 
 
 def _summed_power(
