@@ -21,13 +21,15 @@ from bandcairn.signal import Annotation
 if TYPE_CHECKING:
     from pathlib import Path
 
+    from numpy.typing import NDArray
+
     from bandcairn.recordings.header import Header
 
 # +onset [0x15 duration] 0x14 text 0x14 text 0x14; lists are parted by zero bytes.
 _LIST = re.compile(
     rb"([+-][0-9]+(?:\.[0-9]*)?)(?:\x15([0-9]+(?:\.[0-9]*)?))?\x14((?:[^\x14]*\x14)*)", re.DOTALL
 )
-_TIME_KEEPING = b"\x14\x14"
+_START = re.compile(rb"[+-]?[0-9]+(\.[0-9]*)?")
 
 
 def read_annotations(path: Path, header: Header) -> tuple[Annotation, ...]:
@@ -47,10 +49,11 @@ def read_annotations(path: Path, header: Header) -> tuple[Annotation, ...]:
     if not header.annotation_signals:
         return ()
     first, *others = _lists_by_record(path, header)
-    starts = [_time_keeping(path, record, lists) for record, lists in enumerate(first)]
+    starts = [lists.partition(b"\x14")[0] for lists in first]
     _check_continuity(path, header, starts)
     offset_s = Fraction(starts[0].decode())
-    texts = [lists for lists in first if not lists.endswith(_TIME_KEEPING) or b"\0" in lists]
+    # Most records hold nothing but their start time, followed by two marks.
+    texts = [lists for lists, start in zip(first, starts, strict=True) if len(lists) != len(start) + 2]
     texts += [lists for other in others for lists in other if lists]
     found = [annotation for lists in texts for annotation in _annotations(path, lists, offset_s)]
     return tuple(sorted(found, key=lambda item: (item.onset_s, item.duration_s, item.text)))
@@ -67,30 +70,29 @@ def _lists_by_record(path: Path, header: Header) -> list[list[bytes]]:
     return lists
 
 
-def _time_keeping(path: Path, record: int, lists: bytes) -> bytes:
-    onset = lists.partition(b"\x14")[0]
-    try:
-        float(onset)
-    except ValueError:
-        found = f"data record {record + 1} without its start time"
-        raise refusal(path, found, "one in every record", "Export the file anew from the recorder.") from None
-    return onset
-
-
 def _check_continuity(path: Path, header: Header, starts: list[bytes]) -> None:
+    found_s = _seconds(path, starts)
     if not header.channels:
         return
-    found_s = np.array(starts).astype(np.float64)
     expected_s = found_s[0] + np.arange(len(starts)) * float(header.record_s)
     # Half a sample of the fastest channel: less is rounding in the text, more is lost or doubled samples.
-    allowed_s = 0.5 / float(max(header.rate_hz(signal) for signal in header.channels))
-    off = np.flatnonzero(~(np.abs(found_s - expected_s) <= allowed_s))
+    most_samples = max(signal.samples_per_record for signal in header.channels)
+    off = np.flatnonzero(~(np.abs(found_s - expected_s) <= 0.5 * float(header.record_s) / most_samples))
     if off.size:
         record = int(off[0])
         found = f"data record {record + 1} starting at {found_s[record]:.9g} s"
         allowed = f"{expected_s[record]:.9g} s, for the file says it is continuous"
         remedy = "Export each stretch as a file of its own: stretches are never glued together."
         raise refusal(path, found, allowed, remedy)
+
+
+def _seconds(path: Path, starts: list[bytes]) -> NDArray[np.float64]:
+    try:
+        return np.array(starts).astype(np.float64)
+    except ValueError:
+        record = next(record for record, start in enumerate(starts) if not _START.fullmatch(start))
+        found = f"data record {record + 1} without its start time"
+        raise refusal(path, found, "one in every record", "Export the file anew from the recorder.") from None
 
 
 def _annotations(path: Path, lists: bytes, offset_s: Fraction) -> list[Annotation]:

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
 import numpy as np
 
+from bandcairn.recordings.header import as_text
 from bandcairn.recordings.refusal import refusal
 
 if TYPE_CHECKING:
@@ -15,9 +17,13 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
+    from bandcairn.errors import RecordingError
+
 TIME_COLUMN = "time_s"
 # The hair beyond half a printed digit: sums of binary fractions drift by less than a nanosecond.
 _HAIR_S = 1e-9
+# Bounded, so that a damaged cell cannot make the table of all cells huge.
+_TIME = re.compile(rb"\s*[+-]?(?:[0-9]{1,24}\.?[0-9]{0,24}|\.[0-9]{1,24})(?:[eE][+-]?[0-9]{1,3})?\s*")
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,7 +54,7 @@ class Clock:
         return self.slowest_hz <= rate_hz <= self.fastest_hz
 
 
-def read_clock(path: Path, cells: list[str]) -> Clock:
+def read_clock(path: Path, cells: list[bytes]) -> Clock:
     """Return the rates that fit all printed times.
 
     Sample k lies at k / rate, so row k bounds the period to (time +- half a digit) / k; the bounds of all
@@ -58,7 +64,7 @@ def read_clock(path: Path, cells: list[str]) -> Clock:
     ----------
     path : Path
         Named in refusals.
-    cells : list of str
+    cells : list of bytes
         Times in seconds as printed, one a row.
 
     Returns
@@ -71,11 +77,13 @@ def read_clock(path: Path, cells: list[str]) -> Clock:
     RecordingError
         If a cell is no number, if the first time is not 0, or if the rows do not fit one rate.
     """
-    times_s = _times_s(path, cells)
-    slack_s = 0.5 * 10.0 ** -_decimals(cells) + _HAIR_S
+    _check_times(path, cells)
+    texts = np.strings.strip(np.array(cells))
+    times_s = texts.astype(np.float64)
+    slack_s = 0.5 * 10.0 ** -_decimals(texts) + _HAIR_S
     if abs(times_s[0]) > slack_s[0]:
         remedy = "Time counts from the first sample: export it so, or leave the column away."
-        raise refusal(path, f"{cells[0]} in row 1, column {TIME_COLUMN}", "0", remedy)
+        raise refusal(path, f"{as_text(cells[0])} in row 1, column {TIME_COLUMN}", "0", remedy)
     if len(cells) == 1:
         return Clock(None, None)
     index = np.arange(1, len(cells))
@@ -100,40 +108,27 @@ def simplest_between(low: Fraction, high: Fraction) -> Fraction:
     return whole + 1 / simplest_between(1 / (high - whole), 1 / (low - whole))
 
 
-def _times_s(path: Path, cells: list[str]) -> NDArray[np.float64]:
-    try:
-        times_s = np.array(cells, dtype=np.str_).astype(np.float64)
-        off = np.flatnonzero(~np.isfinite(times_s))
-        if not off.size:
-            return times_s
-        row = int(off[0])
-    except ValueError:
-        row = next(row for row, cell in enumerate(cells) if not _is_number(cell))
-    found = f"{cells[row]!r} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}"
-    raise refusal(path, found, "a time in seconds", "Restore the original file.")
+def _check_times(path: Path, cells: list[bytes]) -> None:
+    row = next((row for row, cell in enumerate(cells) if not _TIME.fullmatch(cell)), None)
+    if row is not None:
+        found = f"{as_text(cells[row])[:40]!r} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}"
+        raise refusal(path, found, "a time in seconds from 0, with a decimal point", "Restore the original.")
 
 
-def _is_number(cell: str) -> bool:
-    try:
-        float(cell)
-    except ValueError:
-        return False
-    return True
-
-
-def _decimals(cells: list[str]) -> NDArray[np.float64]:
-    """Return how many digits stand behind the point of each cell; an exponent moves the point."""
-    texts = np.array(cells, dtype=np.str_)
-    points = np.strings.find(texts, ".")
+def _decimals(texts: NDArray[np.bytes_]) -> NDArray[np.float64]:
+    """Return how many digits stand behind the point of each text; an exponent moves the point."""
+    points = np.strings.find(texts, b".")
     decimals = np.where(points < 0, 0, np.strings.str_len(texts) - points - 1).astype(np.float64)
-    for row in np.flatnonzero(np.strings.find(np.strings.lower(texts), "e") >= 0):
-        mantissa, exponent = cells[row].lower().split("e")
-        decimals[row] = len(mantissa.partition(".")[2]) - int(exponent)
+    exponents = (np.strings.find(texts, b"e") >= 0) | (np.strings.find(texts, b"E") >= 0)
+    for row in np.flatnonzero(exponents):
+        mantissa, exponent = texts[row].lower().split(b"e")
+        decimals[row] = len(mantissa.partition(b".")[2]) - int(exponent)
     return decimals
 
 
-def _irregular(path: Path, cells: list[str], row: int) -> Exception:
-    found = f"{cells[row]} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}, after {cells[row - 1]}"
+def _irregular(path: Path, cells: list[bytes], row: int) -> RecordingError:
+    before, here = as_text(cells[row - 1]), as_text(cells[row])
+    found = f"{here} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}, after {before}"
     allowed = "steps of one length, to half of the last printed digit"
     remedy = "Samples are missing or doubled there: export each regular stretch as a file of its own."
     return refusal(path, found, allowed, remedy)

@@ -8,9 +8,7 @@ from __future__ import annotations
 
 import csv
 import io
-import math
 from dataclasses import dataclass
-from fractions import Fraction
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -23,12 +21,14 @@ from bandcairn.signal import ChannelFacts, FileFacts, Run
 from bandcairn.units import KNOWN_UNITS, microvolts_per
 
 if TYPE_CHECKING:
+    from fractions import Fraction
     from pathlib import Path
 
     from numpy.typing import NDArray
 
     from bandcairn.recordings.declared import Declared
 
+_RESTORE = "Restore the original file."
 _BYTE_ORDER_MARK = b"\xef\xbb\xbf"
 
 
@@ -112,7 +112,7 @@ def clock_of(text: Text) -> Clock | None:
     """Return what the column ``time_s`` says; None where there is none."""
     if TIME_COLUMN not in text.names:
         return None
-    return read_clock(text.path, _texts(text, _place(text, TIME_COLUMN)))
+    return read_clock(text.path, _cells(text, _place(text, TIME_COLUMN)))
 
 
 def parse(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64] | tuple[str, ...], ...]:
@@ -225,6 +225,8 @@ def _parse_fast(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64
     """Return columns as numbers, or None where a cell is none: the slow way then tells which."""
     import pandas as pd
 
+    # Correct rounding is the default from 3.1 on, where asking for it is deprecated.
+    exact = tuple(int(part) for part in pd.__version__.split(".")[:2]) >= (3, 1)
     try:
         frame = pd.read_csv(
             io.BytesIO(text.body),
@@ -236,7 +238,7 @@ def _parse_fast(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64
             index_col=False,
             na_filter=False,
             skip_blank_lines=False,
-            float_precision="round_trip",
+            float_precision=None if exact else "round_trip",
         )
     except ValueError:
         return None
@@ -245,25 +247,16 @@ def _parse_fast(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64
     return tuple(frame[place].to_numpy() for place in places)
 
 
-def _texts(text: Text, place: int) -> list[str]:
+def _cells(text: Text, place: int) -> list[bytes]:
     """Return the cells of one column as written."""
-    import pandas as pd
-
-    if not _cells_fit(text):
-        return [row[place].strip() for row in _rows(text)]
-    frame = pd.read_csv(
-        io.BytesIO(text.body),
-        sep=text.separator,
-        header=None,
-        names=range(len(text.names)),
-        usecols=[place],
-        dtype=object,
-        index_col=False,
-        na_filter=False,
-        skip_blank_lines=False,
-        encoding_errors="replace",
-    )
-    return [cell.strip() for cell in frame[place]]
+    if b'"' in text.body or not _cells_fit(text):
+        return [row[place].encode() for row in _rows(text)]
+    separator = text.separator.encode()
+    lines = text.body.removesuffix(b"\n").split(b"\n")
+    try:
+        return [line.split(separator, place + 1)[place] for line in lines]
+    except IndexError:
+        return [row[place].encode() for row in _rows(text)]
 
 
 def _rows(text: Text) -> list[list[str]]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import datetime
+import datetime as dt
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 
     from bandcairn.signal import Annotation
 
-_START_DATE = datetime.date(2001, 1, 1)
+_START_DATE = dt.date(2001, 1, 1)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -116,7 +116,7 @@ def write_delimited(
         np.savetxt(file, np.column_stack(columns), fmt=f"%.{decimals}f", delimiter=separator)
 
 
-def _write(
+def _write(  # noqa: PLR0917  # what its two callers were given, in the same order
     path: Path,
     container: type,
     signal: type,
@@ -144,6 +144,6 @@ def _write(
         annotations=notes,
         patient=edfio.Patient(code=person.code, name=person.name),
         recording=edfio.Recording(startdate=_START_DATE),
-        starttime=datetime.time(0, 0, 0),
+        starttime=dt.time(0, 0, 0),
         data_record_duration=record_s,
     ).write(path)

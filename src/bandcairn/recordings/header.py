@@ -177,7 +177,7 @@ def scaling_of(path: Path, signal: SignalHeader) -> Scaling:
 
 
 def as_text(field: bytes) -> str:
-    """Decode a text: UTF-8, which holds ASCII, else Latin-1, in which older recorders write the micro sign."""
+    """Decode a text: UTF-8, else Latin-1, in which older recorders write the micro sign."""
     try:
         return field.decode().strip(" \0")
     except UnicodeDecodeError:
@@ -190,6 +190,11 @@ def decimal(path: Path, text: str, what: str) -> Fraction:
         hint = "Write a decimal point." if "," in text else "Export the file anew from the recorder."
         raise refusal(path, f"{text!r} as {what}", "a decimal number", hint)
     return Fraction(text)
+
+
+def plain_number(text: str) -> str:
+    """Return a decimal number as a fraction, so that 1.50 and 1.5 are alike; any other text unchanged."""
+    return str(Fraction(text)) if _DECIMAL_NUMBER.fullmatch(text) else text
 
 
 def _whole(path: Path, field: bytes, what: str, at_least: int | None = None) -> int:

@@ -55,7 +55,7 @@ class RawSignal:
         channels = zip(scaled, self.samples, self.gain_uv, self.offset_uv, strict=True)
         for row, samples, gain_uv, offset_uv in channels:
             np.multiply(samples, gain_uv, out=row)
-            row += offset_uv
+            np.add(row, offset_uv, out=row)
         return Signal(samples=scaled, rate_hz=self.rate_hz, channels=self.labels, runs=self.runs)
 
 
@@ -88,16 +88,15 @@ def cut(path: Path, n_samples: int, rate_hz: Fraction, start_s: float | None, st
     length_s = n_samples / rate_hz
     start = Fraction(0) if start_s is None else _as_written(start_s)
     stop = length_s if stop_s is None else _as_written(stop_s)
+    found = f"a cut from {start_s or 0} s to {'the end' if stop_s is None else f'{stop_s} s'}"
+    remedy = "Correct start_s and stop_s in the recordings table."
     if start is None or stop is None or not 0 <= start < stop <= length_s:
-        found = f"a cut from {start_s if start_s is not None else 0} s to {stop_s if stop_s is not None else 'the end'}"
         allowed = f"0 <= start < stop <= {float(length_s):.9g} s, the length of the file"
-        raise refusal(path, found, allowed, "Correct start_s and stop_s in the recordings table.")
+        raise refusal(path, found, allowed, remedy)
     first, end = math.ceil(start * rate_hz), math.ceil(stop * rate_hz)
     if first >= end:
-        found = f"a cut from {start_s} s to {stop_s} s, which holds no sample at {float(rate_hz):g} Hz"
-        raise refusal(
-            path, found, "one sample or more", "Correct start_s and stop_s in the recordings table."
-        )
+        found += f", without a sample at {float(rate_hz):g} Hz"
+        raise refusal(path, found, "one sample or more", remedy)
     return Run(first=first, stop=end, start_s=first / rate_hz)
 
 

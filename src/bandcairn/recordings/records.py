@@ -90,9 +90,12 @@ def _integers(
 ) -> NDArray[np.int16] | NDArray[np.int32]:
     if header.container == "EDF":
         return block.view("<i2")[:, signal.first_byte // 2 : signal.stop_byte // 2]
-    # Three bytes become the upper three of four; the shift back carries the sign along.
-    three = block[:, signal.first_byte : signal.stop_byte].reshape(len(block), -1, 3)
-    four = np.zeros((*three.shape[:2], 4), dtype=np.uint8)
-    four[:, :, 1:] = three
-    shifted: NDArray[np.int32] = four.view("<i4")[:, :, 0] >> 8
+    # Words of four bytes, three apart, that begin a byte early: the shift drops that byte and keeps the sign.
+    three = block[:, signal.first_byte : signal.stop_byte]
+    padded = np.zeros(three.size + 1, dtype=np.uint8)
+    padded[1:].reshape(three.shape)[:] = three
+    words = np.ndarray(
+        (len(block), signal.samples_per_record), "<i4", buffer=padded, strides=(three.shape[1], 3)
+    )
+    shifted: NDArray[np.int32] = words >> 8
     return shifted

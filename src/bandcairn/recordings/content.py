@@ -1,0 +1,190 @@
+"""Digests of what a recording says, whoever it belongs to and however its bytes are laid out.
+
+The digest of a channel covers its label, samples as stored, scaling, unit, rate and gaps; not the identity
+fields, dates, texts on sensors, reserved bytes, other channels or the name of the file. So a de-identified
+copy keeps its digests, and one sample more by one step changes one of them.
+
+Layout, format 1: the ASCII line ``bandcairn channel 1``, a line feed, a JSON object with sorted keys and
+without blanks, a line feed, and the samples: little-endian two's complement of two bytes (EDF) or three
+(BDF), or little-endian IEEE 754 doubles (delimited text). Exact numbers are fractions written as text.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bandcairn.recordings.annotations import read_annotations
+from bandcairn.recordings.clock import TIME_COLUMN
+from bandcairn.recordings.delimited import clock_of, load, parse
+from bandcairn.recordings.header import plain_number, read_header
+from bandcairn.recordings.reading import is_delimited
+from bandcairn.recordings.records import bytes_of, each_block
+from bandcairn.recordings.refusal import unreadable
+
+if TYPE_CHECKING:
+    from collections.abc import Mapping
+    from fractions import Fraction
+    from pathlib import Path
+
+    from numpy.typing import NDArray
+
+    from bandcairn.recordings.header import Header, SignalHeader
+    from bandcairn.signal import Annotation
+
+CONTENT_FORMAT = 1
+
+
+@dataclass(frozen=True, slots=True)
+class ChannelContent:
+    """Digest of one channel.
+
+    Attributes
+    ----------
+    label : str
+        Name as written in the file.
+    sha256 : str
+        64 hexadecimal digits.
+    """
+
+    label: str
+    sha256: str
+
+
+@dataclass(frozen=True, slots=True)
+class FileContent:
+    """Digests of one file.
+
+    Attributes
+    ----------
+    file_sha256 : str
+        Of the bytes of the file: tells a copy from the original; never part of a key.
+    annotations_sha256 : str
+        Of onsets, durations and texts of all annotations.
+    channels : tuple of ChannelContent
+        In the order of the file; annotation and status channels are left out.
+    """
+
+    file_sha256: str
+    annotations_sha256: str
+    channels: tuple[ChannelContent, ...]
+
+    def of(self, labels: tuple[str, ...]) -> tuple[str, ...]:
+        """Return the digests of the named channels; KeyError for a name that does not occur once."""
+        names = [channel.label for channel in self.channels]
+        for label in labels:
+            if names.count(label) != 1:
+                raise KeyError(label)
+        return tuple(self.channels[names.index(label)].sha256 for label in labels)
+
+
+def content_digests(path: Path) -> FileContent:
+    """Read a file once and digest the content of every channel.
+
+    Values are not judged here: a cell that is no number, or a range that is empty, is digested as it stands
+    and refused by `read` if the channel is used.
+
+    Parameters
+    ----------
+    path : Path
+        ``.edf``, ``.bdf``, ``.csv`` or ``.tsv``, in any case.
+
+    Returns
+    -------
+    FileContent
+        The same for every copy of the signals.
+
+    Raises
+    ------
+    RecordingError
+        If the file cannot be read or its layout is at fault.
+    """
+    return _of_delimited(path) if is_delimited(path) else _of_edf(path)
+
+
+def _of_edf(path: Path) -> FileContent:
+    header = read_header(path)
+    annotations = _of_annotations(read_annotations(path, header))
+    channels = [(signal, _opened(_description(header, signal))) for signal in header.channels]
+    whole_file = hashlib.sha256(_head(path, header.header_bytes), usedforsecurity=False)
+    for block in each_block(path, header):
+        whole_file.update(block)
+        for signal, digest in channels:
+            digest.update(bytes_of(block, signal))
+    return FileContent(
+        file_sha256=whole_file.hexdigest(),
+        annotations_sha256=annotations,
+        channels=tuple(ChannelContent(signal.label, digest.hexdigest()) for signal, digest in channels),
+    )
+
+
+def _of_delimited(path: Path) -> FileContent:
+    text = load(path)
+    clock = clock_of(text)
+    rate_hz = clock.rate_hz if clock else None
+    places = tuple(place for place, name in enumerate(text.names) if name != TIME_COLUMN)
+    channels = [
+        ChannelContent(text.names[place], _of_column(text.names[place], rate_hz, column))
+        for place, column in zip(places, parse(text, places), strict=True)
+    ]
+    return FileContent(
+        file_sha256=hashlib.sha256(_head(path), usedforsecurity=False).hexdigest(),
+        annotations_sha256=_of_annotations(()),
+        channels=tuple(channels),
+    )
+
+
+def _description(header: Header, signal: SignalHeader) -> dict[str, object]:
+    return {
+        "label": signal.label,
+        "unit": signal.unit,
+        "rate_hz": str(header.rate_hz(signal)),
+        "scaling": [plain_number(text) for text in signal.scaling_texts],
+        "samples": f"int{8 * header.sample_bytes}",
+        "runs": [[0, header.n_samples(signal), "0"]],
+    }
+
+
+def _of_column(label: str, rate_hz: Fraction | None, column: NDArray[np.float64] | tuple[str, ...]) -> str:
+    numeric = isinstance(column, np.ndarray)
+    digest = _opened(
+        {
+            "label": label,
+            "rate_hz": None if rate_hz is None else str(rate_hz),
+            "samples": "float64" if numeric else "text",
+            "runs": [[0, len(column), "0"]],
+        }
+    )
+    if isinstance(column, np.ndarray):
+        digest.update(np.ascontiguousarray(column, dtype="<f8"))
+    else:
+        digest.update("\n".join(column).encode())
+    return digest.hexdigest()
+
+
+def _of_annotations(annotations: tuple[Annotation, ...]) -> str:
+    rows = [[one.onset_s, one.duration_s, one.text] for one in annotations]
+    return hashlib.sha256(
+        f"bandcairn annotations {CONTENT_FORMAT}\n".encode() + _canonical(rows), usedforsecurity=False
+    ).hexdigest()
+
+
+def _opened(description: Mapping[str, object]) -> hashlib._Hash:
+    opening = f"bandcairn channel {CONTENT_FORMAT}\n".encode() + _canonical(description) + b"\n"
+    return hashlib.sha256(opening, usedforsecurity=False)
+
+
+def _canonical(value: object) -> bytes:
+    return json.dumps(value, sort_keys=True, separators=(",", ":"), ensure_ascii=True).encode()
+
+
+def _head(path: Path, n_bytes: int = -1) -> bytes:
+    try:
+        with path.open("rb") as file:
+            return file.read(n_bytes)
+    except OSError as error:
+        raise unreadable(path, error) from error

@@ -1,0 +1,219 @@
+"""The memory of files seen: facts and digests are computed once for each state of a file."""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import os
+import tempfile
+import time
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import lru_cache
+from pathlib import Path
+from typing import Any
+
+from bandcairn.errors import RecordingError
+from bandcairn.recordings.content import CONTENT_FORMAT, ChannelContent, FileContent, content_digests
+from bandcairn.recordings.reading import inspect
+from bandcairn.recordings.refusal import refusal, unreadable
+from bandcairn.signal import Annotation, ChannelFacts, FileFacts
+
+# Raised whenever what is remembered, or the reading it comes from, changes.
+_INDEX_FORMAT = f"1.{CONTENT_FORMAT}"
+# A file may change twice within one tick of the file system's clock, and look unchanged. Ticks are a few
+# milliseconds on the usual file systems (from memory); a file must be older than this to be trusted.
+_RACY_NS = 100_000_000
+
+
+@dataclass(frozen=True, slots=True)
+class _State:
+    """What tells one state of a file from another, without opening it.
+
+    Attributes
+    ----------
+    mark : list of int
+        Size, time of modification and time of change of status in ns, as JSON holds them.
+    settled : bool
+        Whether the file was old enough, when looked at, for its times to tell any later change.
+    """
+
+    mark: list[int]
+    settled: bool
+
+
+class RawIndex:
+    """Facts and digests of raw files by path, size and times; each file is opened once for each state.
+
+    Only a memory: a file of it that is missing, damaged or of another format is an empty memory. Failures are
+    never remembered. Lookups from several threads are safe.
+
+    Parameters
+    ----------
+    index_path : Path
+        Where `save` writes.
+    entries : dict
+        By path relative to the study folder: the state as three numbers, facts and digests as JSON holds
+        them.
+    """
+
+    def __init__(self, index_path: Path, entries: dict[str, Any]) -> None:
+        self._index_path = index_path
+        self._entries = entries
+        self._changed = False
+
+    @classmethod
+    def load(cls, index_path: Path) -> RawIndex:
+        """Return what `index_path` remembers, or an empty memory."""
+        try:
+            content = json.loads(index_path.read_bytes())
+            entries = content["entries"] if content["format"] == _INDEX_FORMAT else {}
+        except (OSError, ValueError, KeyError, TypeError, RecursionError):
+            entries = {}
+        return cls(index_path, entries if isinstance(entries, dict) else {})
+
+    def remembers(self, path: Path, root: Path) -> bool:
+        """Return whether `facts` and `content` would answer without opening the file."""
+        with contextlib.suppress(RecordingError):
+            known = self._known(_name(path, root), _state(path))
+            return known is not None and {"facts", "content"} <= known.keys()
+        return False
+
+    def facts(self, path: Path, root: Path) -> FileFacts:
+        """Return what `inspect` says of `path`, from memory if the file is in the same state.
+
+        Parameters
+        ----------
+        path : Path
+            The file, inside `root` or outside.
+        root : Path
+            The study folder, so that a moved study keeps its memory.
+
+        Raises
+        ------
+        RecordingError
+            As `inspect`; also if the file changes while it is read.
+        """
+        name = _name(path, root)
+        state = _state(path)
+        known = self._known(name, state)
+        if known is not None:
+            with contextlib.suppress(KeyError, TypeError, ValueError, ZeroDivisionError):
+                return _decode_facts(known["facts"])
+        facts = inspect(path)
+        self._remember(name, path, state, {"facts": _encode_facts(facts)})
+        return facts
+
+    def content(self, path: Path, root: Path) -> FileContent:
+        """Return what `content_digests` says of `path`, from memory if the file is in the same state.
+
+        Parameters and errors as in `facts`.
+        """
+        name = _name(path, root)
+        state = _state(path)
+        known = self._known(name, state)
+        if known is not None:
+            with contextlib.suppress(KeyError, TypeError, ValueError):
+                return _decode_content(known["content"])
+        content = content_digests(path)
+        self._remember(name, path, state, {"content": _encode_content(content)})
+        return content
+
+    def save(self) -> None:
+        """Write the memory if it has changed: private, and never half.
+
+        A folder that cannot be written to is no error: the next start looks at the files again.
+        """
+        if not self._changed:
+            return
+        content = json.dumps({"format": _INDEX_FORMAT, "entries": self._entries}, separators=(",", ":"))
+        with contextlib.suppress(OSError):
+            _write_whole(self._index_path, content)
+            self._changed = False
+
+    def _known(self, name: str, state: _State) -> dict[str, Any] | None:
+        entry = self._entries.get(name)
+        if isinstance(entry, dict) and entry.get("state") == state.mark:
+            return entry
+        return None
+
+    def _remember(self, name: str, path: Path, state: _State, found: dict[str, Any]) -> None:
+        if _state(path).mark != state.mark:
+            remedy = "Wait until it is complete, then start again."
+            raise refusal(path, "a file that changed while it was read", "a finished file", remedy)
+        if not state.settled:
+            self._entries.pop(name, None)
+            return
+        # A new dictionary in one step: another thread sees the old entry or the new one.
+        known = self._known(name, state) or {"state": state.mark}
+        self._entries[name] = known | found
+        self._changed = True
+
+
+def _state(path: Path) -> _State:
+    try:
+        status = os.stat(path)
+    except OSError as error:
+        raise unreadable(path, error) from error
+    settled = time.time_ns() - max(status.st_mtime_ns, status.st_ctime_ns) >= _RACY_NS
+    return _State([status.st_size, status.st_mtime_ns, status.st_ctime_ns], settled)
+
+
+def _name(path: Path, root: Path) -> str:
+    # Text rather than Path.relative_to: ten times faster, and a thousand files are asked for at each start.
+    text, folder = str(path), f"{root}{os.sep}"
+    return text.removeprefix(folder)
+
+
+def _write_whole(target: Path, content: str) -> None:
+    """Write beside the target, then rename; the file is readable by its owner alone, as mkstemp makes it."""
+    target.parent.mkdir(parents=True, exist_ok=True, mode=0o700)
+    handle, beside = tempfile.mkstemp(prefix=f".{target.name}.", dir=target.parent)
+    try:
+        with os.fdopen(handle, "w", encoding="utf-8") as file:
+            file.write(content)
+        Path(beside).replace(target)
+    except BaseException:
+        Path(beside).unlink(missing_ok=True)
+        raise
+
+
+def _encode_facts(facts: FileFacts) -> dict[str, Any]:
+    return {
+        "channels": [
+            [one.label, None if one.rate_hz is None else str(one.rate_hz), one.unit, one.n_samples]
+            for one in facts.channels
+        ],
+        "annotations": [[one.onset_s, one.duration_s, one.text] for one in facts.annotations],
+    }
+
+
+def _decode_facts(entry: dict[str, Any]) -> FileFacts:
+    return FileFacts(
+        channels=tuple(
+            ChannelFacts(label, _rate_hz(rate_hz), unit, n_samples)
+            for label, rate_hz, unit, n_samples in entry["channels"]
+        ),
+        annotations=tuple(Annotation(*row) for row in entry["annotations"]),
+    )
+
+
+@lru_cache(maxsize=1024)
+def _rate_hz(text: str | None) -> Fraction | None:
+    return None if text is None else Fraction(text)
+
+
+def _encode_content(content: FileContent) -> dict[str, Any]:
+    return {
+        "file": content.file_sha256,
+        "annotations": content.annotations_sha256,
+        "channels": [[one.label, one.sha256] for one in content.channels],
+    }
+
+
+def _decode_content(entry: dict[str, Any]) -> FileContent:
+    return FileContent(
+        file_sha256=entry["file"],
+        annotations_sha256=entry["annotations"],
+        channels=tuple(ChannelContent(label, sha256) for label, sha256 in entry["channels"]),
+    )
