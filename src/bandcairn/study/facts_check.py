@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from bandcairn.signal import ChannelFacts, FileFacts
     from bandcairn.study.description import LoadedStudy
     from bandcairn.study.models import AnySignal, Load
-    from bandcairn.study.tables import RecordingRow
+    from bandcairn.study.tables import RecordingRow, SegmentRow
 
 _SAME = 1e-9  # relative: a declared decimal rate and the exact fraction of a file differ by rounding alone
 _SLACK_S = 1e-6  # a stretch may end this much beyond the last sample: tables are written with rounded times
@@ -32,12 +32,9 @@ class _Case:
     row: RecordingRow
     name: str
     signal: AnySignal
+    load: Load
     facts: FileFacts
-
-    @property
-    def load(self) -> Load:
-        """What is declared of delimited files."""
-        return self.study.description.load_of(self.signal)
+    segments: tuple[SegmentRow, ...]
 
     def channels(self) -> tuple[ChannelFacts, ...]:
         """Return the channels of the signal that the file holds, in the order of the signal."""
@@ -72,24 +69,30 @@ def check_facts(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> tuple[Pro
     Returns
     -------
     tuple of Problem
-        Every problem, in the order of the recordings table; empty where all fits.
+        Every problem, by signal and in the order of the recordings table; empty where all fits.
     """
     problems: list[Problem] = []
-    for row in study.recordings:
-        if row.recording not in facts:
-            continue
-        problems += _check_stretch(study, row, facts[row.recording])
-        for name, signal in study.description.signals.items():
-            problems += _check_case(_Case(study, row, name, signal, facts[row.recording]))
+    segments = _by_recording(study.segments)
+    rows = [row for row in study.recordings if row.recording in facts]
+    for row in rows:
+        problems += _check_stretch(study, row, facts[row.recording], segments.get(row.recording, ()))
     for name, signal in study.description.signals.items():
+        load = study.description.load_of(signal)
         cases = [
-            _Case(study, row, name, signal, facts[row.recording])
-            for row in study.recordings
-            if row.recording in facts
+            _Case(study, row, name, signal, load, facts[row.recording], segments.get(row.recording, ()))
+            for row in rows
         ]
+        problems += [problem for case in cases for problem in _check_case(case)]
         problems += _check_common_rate(cases)
     problems += _check_annotations(study, facts)
     return tuple(dict.fromkeys(problems))
+
+
+def _by_recording(segments: tuple[SegmentRow, ...]) -> dict[str, tuple[SegmentRow, ...]]:
+    grouped: dict[str, list[SegmentRow]] = {}
+    for segment in segments:
+        grouped.setdefault(segment.recording, []).append(segment)
+    return {recording: tuple(rows) for recording, rows in grouped.items()}
 
 
 def _check_case(case: _Case) -> Iterator[Problem]:
@@ -182,7 +185,9 @@ def _microvolts(unit: str | None) -> float | None:
         return None
 
 
-def _check_stretch(study: LoadedStudy, row: RecordingRow, facts: FileFacts) -> Iterator[Problem]:
+def _check_stretch(
+    study: LoadedStudy, row: RecordingRow, facts: FileFacts, segments: tuple[SegmentRow, ...]
+) -> Iterator[Problem]:
     """Yield the times of the tables that lie outside the file, or outside the stretch used of it."""
     duration_s = _duration_s(study, facts)
     if duration_s is None:
@@ -196,9 +201,9 @@ def _check_stretch(study: LoadedStudy, row: RecordingRow, facts: FileFacts) -> I
             )
     first_s = row.start_s or 0.0
     last_s = duration_s if row.stop_s is None else min(row.stop_s, duration_s)
-    for segment in study.segments:
+    for segment in segments:
         outside = segment.start_s < first_s - _SLACK_S or segment.stop_s > last_s + _SLACK_S
-        if segment.recording == row.recording and outside:
+        if outside:
             column = "stop_s" if segment.stop_s > last_s + _SLACK_S else "start_s"
             where = f"row {segment.row}, column {column}"
             found = f"{segment.segment} from {segment.start_s:g} to {segment.stop_s:g} s"
@@ -228,7 +233,7 @@ def _check_epoch(case: _Case) -> Iterator[Problem]:
 
 
 def _stretches_s(case: _Case) -> list[float]:
-    """Return the lengths of the stretches that a signal uses of a recording; empty where the rate is unknown."""
+    """Return the lengths of the stretches that a signal uses; empty where the rate is unknown."""
     durations = [c.n_samples / rate for c in case.channels() if (rate := case.rate_hz(c))]
     if not durations:
         return []
@@ -240,7 +245,7 @@ def _stretches_s(case: _Case) -> list[float]:
     }
     if segments and case.signal.segments != ():
         return [stop_s - start_s for start_s, stop_s in used.values()]
-    stop_s = min(min(durations), math.inf if case.row.stop_s is None else case.row.stop_s)
+    stop_s = min(*durations, math.inf if case.row.stop_s is None else case.row.stop_s)
     return [stop_s - (case.row.start_s or 0.0)]
 
 
@@ -253,8 +258,7 @@ def _segments(case: _Case) -> list[tuple[str, float, float]]:
             for note in case.facts.annotations
             if note.text in declared.annotations
         ]
-    rows = (row for row in case.study.segments if row.recording == case.row.recording)
-    return [(row.segment, row.start_s, row.stop_s) for row in rows]
+    return [(row.segment, row.start_s, row.stop_s) for row in case.segments]
 
 
 def _check_common_rate(cases: list[_Case]) -> Iterator[Problem]:

@@ -350,7 +350,7 @@ class _Signal(Block):
     )
     load: Load | None = Field(
         default=None,
-        description="Rate and unit of delimited files for this signal; absent keys: as in the study's load.",
+        description="Rate and unit of delimited files for this signal; absent: the study's load.",
         json_schema_extra=_told("", "a load block"),
     )
     quality: QualityLimits = Field(
@@ -533,7 +533,7 @@ class StudyDescription(Block):
     )
     load: Load = Field(
         default=Load(),
-        description="Rate and unit of delimited files, where a signal's own load does not say otherwise.",
+        description="Rate and unit of delimited files, for every signal without a load block of its own.",
         json_schema_extra=_told("", "a load block"),
     )
     signals: Annotated[dict[Name, Annotated[AnySignal, Field(discriminator="kind")]], Field(min_length=1)] = (
@@ -549,9 +549,5 @@ class StudyDescription(Block):
     )
 
     def load_of(self, signal: AnySignal) -> Load:
-        """Return what is declared of delimited files: key by key, the signal's load before the study's."""
-        own = signal.load or Load()
-        return Load(
-            rate_hz=self.load.rate_hz if own.rate_hz is None else own.rate_hz,
-            unit=self.load.unit if own.unit is None else own.unit,
-        )
+        """Return what is declared of delimited files: the signal's own load block, else the study's."""
+        return signal.load or self.load
