@@ -10,7 +10,6 @@ References
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING, Literal
@@ -33,8 +32,8 @@ _COSINES: dict[str, tuple[float, ...]] = {
     "blackman": (0.42, 0.5, 0.08),
     "boxcar": (1.0,),
 }
-# Samples transformed at once: 1 MB and as much again for the result, so that a core's cache holds them.
-_SAMPLES_AT_ONCE = 131_072
+# Samples transformed at once: 256 kB and as much again for the result, so that a core's own cache holds both.
+_SAMPLES_AT_ONCE = 32_768
 
 
 @dataclass(frozen=True, slots=True)
@@ -170,47 +169,57 @@ def _averaged(
     """Average the periodograms of the segments of every stretch."""
     weights = window(taper, cut.length)
     leading, n_freq = samples.shape[:-1], cut.length // 2 + 1
-    stretches = samples.reshape(math.prod(leading), samples.shape[-1])
-    power = np.empty((len(stretches), n_freq))
-    at_once = max(1, _SAMPLES_AT_ONCE // (cut.count * cut.length))
-    for first in range(0, len(stretches), at_once):
-        some = stretches[first : first + at_once]
-        power[first : first + at_once] = _summed_power(some, cut, weights, detrend)
-    power *= 1 / (rate_hz * np.dot(weights, weights) * cut.count)
+    density = np.zeros((*leading, n_freq))
+    sheets, sums = np.atleast_2d(samples), np.atleast_2d(density)
+    # Sheet by sheet, for to flatten the leading axes would copy a view of overlapping epochs.
+    for sheet in np.ndindex(sheets.shape[:-2]):
+        _add_power(sheets[sheet], cut, weights, detrend, sums[sheet])
+    density *= 1 / (rate_hz * np.dot(weights, weights) * cut.count)
     # An even length puts its last bin on Nyquist; an odd one has none there.
-    power[:, 1 : (cut.length + 1) // 2] *= 2
-    return Spectrum(
-        np.arange(n_freq, dtype=np.float64) * (rate_hz / cut.length), power.reshape(*leading, n_freq)
-    )
+    density[..., 1 : (cut.length + 1) // 2] *= 2
+    return Spectrum(np.arange(n_freq, dtype=np.float64) * (rate_hz / cut.length), density)
 
 
-def _summed_power(
-    stretches: NDArray[np.float64], cut: _Segments, weights: NDArray[np.float64], detrend: Detrend
-) -> NDArray[np.float64]:
-    """Return the sum over segments of the squared spectra, shape (n_stretches, n_freq)."""
-    total = np.zeros((len(stretches), cut.length // 2 + 1))
-    at_once = max(1, _SAMPLES_AT_ONCE // cut.length)
-    views = np.lib.stride_tricks.sliding_window_view(stretches, cut.length, axis=-1)[:, :: cut.step]
-    for first in range(0, cut.count, at_once):
-        spectra = np.fft.rfft(_tapered(views[:, first : first + at_once], weights, detrend))
-        # Real and imaginary parts lie side by side: their squares are summed without a temporary array.
-        parts = spectra.view(np.float64)
-        squares = np.einsum("rsf,rsf->rf", parts, parts)
-        total += squares[:, ::2] + squares[:, 1::2]
-    return total
+def _add_power(
+    stretches: NDArray[np.float64],
+    cut: _Segments,
+    weights: NDArray[np.float64],
+    detrend: Detrend,
+    power: NDArray[np.float64],
+) -> None:
+    """Add to `power`, shape (n_stretches, n_freq), the squared spectra of all segments of each stretch."""
+    segments = np.lib.stride_tricks.sliding_window_view(stretches, cut.length, axis=-1)[:, :: cut.step]
+    rows = max(1, _SAMPLES_AT_ONCE // (cut.count * cut.length))
+    columns = min(cut.count, max(1, _SAMPLES_AT_ONCE // cut.length))
+    # Both are used again for every block: fresh memory costs more than the transform.
+    tapered = np.empty((rows, columns, cut.length))
+    spectra = np.empty((rows, columns, cut.length // 2 + 1), np.complex128)
+    for row in range(0, len(stretches), rows):
+        for column in range(0, cut.count, columns):
+            block = segments[row : row + rows, column : column + columns]
+            here = np.s_[: block.shape[0], : block.shape[1]]
+            _taper(block, weights, detrend, tapered[here])
+            np.fft.rfft(tapered[here], out=spectra[here])
+            # Real and imaginary parts lie side by side: squared and summed without a temporary array.
+            parts = spectra[here].view(np.float64)
+            squares = np.einsum("rsf,rsf->rf", parts, parts)
+            power[row : row + rows] += squares[:, ::2] + squares[:, 1::2]
 
 
-def _tapered(
-    segments: NDArray[np.float64], weights: NDArray[np.float64], detrend: Detrend
-) -> NDArray[np.float64]:
-    """Return the segments without their trend, times the window, in an array of their own."""
+def _taper(
+    segments: NDArray[np.float64],
+    weights: NDArray[np.float64],
+    detrend: Detrend,
+    tapered: NDArray[np.float64],
+) -> None:
+    """Fill `tapered` with the segments, without their trend, times the window."""
     if detrend == "none":
-        return segments * weights
-    tapered: NDArray[np.float64] = segments - segments.mean(axis=-1, keepdims=True)
+        np.multiply(segments, weights, out=tapered)
+        return
+    np.subtract(segments, segments.mean(axis=-1, keepdims=True), out=tapered)
     if detrend == "linear":
         # About the middle, offset and slope of the least-squares line are found apart.
         time = np.arange(segments.shape[-1]) - (segments.shape[-1] - 1) / 2
         slope = tapered @ (time / np.dot(time, time))
         tapered -= slope[..., np.newaxis] * time
     tapered *= weights
-    return tapered
