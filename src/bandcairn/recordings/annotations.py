@@ -66,7 +66,7 @@ def _lists_by_record(path: Path, header: Header) -> list[list[bytes]]:
         for of_signal, signal in zip(lists, header.annotation_signals, strict=True):
             raw = bytes_of(block, signal)
             # numpy drops the zeros behind a fixed-width text, in one go for all records.
-            of_signal += raw.view(f"S{raw.shape[1]}")[:, 0].tolist()
+            of_signal.extend(raw.view(f"S{raw.shape[1]}")[:, 0].tolist())
     return lists
 
 

@@ -112,9 +112,9 @@ def _of_edf(path: Path) -> FileContent:
     channels = [(signal, _opened(_description(header, signal))) for signal in header.channels]
     whole_file = hashlib.sha256(_head(path, header.header_bytes), usedforsecurity=False)
     for block in each_block(path, header):
-        whole_file.update(block)
+        whole_file.update(block.data)
         for signal, digest in channels:
-            digest.update(bytes_of(block, signal))
+            digest.update(bytes_of(block, signal).data)
     return FileContent(
         file_sha256=whole_file.hexdigest(),
         annotations_sha256=annotations,
@@ -160,7 +160,7 @@ def _of_column(label: str, rate_hz: Fraction | None, column: NDArray[np.float64]
         }
     )
     if isinstance(column, np.ndarray):
-        digest.update(np.ascontiguousarray(column, dtype="<f8"))
+        digest.update(np.ascontiguousarray(column, dtype="<f8").data)
     else:
         digest.update("\n".join(column).encode())
     return digest.hexdigest()

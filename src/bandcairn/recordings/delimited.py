@@ -268,12 +268,11 @@ def _rows(text: Text) -> list[list[str]]:
         found = f"bytes that are not UTF-8 in {_row_name(row)}"
         raise refusal(text.path, found, "UTF-8", "Save the file as UTF-8.") from None
     rows = [row or [""] for row in csv.reader(io.StringIO(body, newline=""), delimiter=text.separator)]
-    for number, row in enumerate(rows):
-        if len(row) != len(text.names):
-            hint = (
-                "Cells must use a decimal point." if len(row) > len(text.names) else "Restore the original."
-            )
-            found = f"{len(row)} cells in {_row_name(number)}"
+    for number, cells in enumerate(rows):
+        if len(cells) != len(text.names):
+            too_many = len(cells) > len(text.names)
+            hint = "If its numbers have decimal commas, write decimal points." if too_many else _RESTORE
+            found = f"{len(cells)} cells in {_row_name(number)}"
             raise refusal(text.path, found, f"{len(text.names)}, as in the header line", hint)
     return rows
 

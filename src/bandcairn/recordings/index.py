@@ -24,6 +24,16 @@ _INDEX_FORMAT = f"1.{CONTENT_FORMAT}"
 # A file may change twice within one tick of the file system's clock, and look unchanged. Ticks are a few
 # milliseconds on the usual file systems (from memory); a file must be older than this to be trusted.
 _RACY_NS = 100_000_000
+# What an entry of another shape raises when it is decoded.
+_DAMAGE = (AttributeError, KeyError, IndexError, TypeError, ValueError, ZeroDivisionError)
+
+
+@dataclass(frozen=True, slots=True)
+class Surveyed:
+    """What a file says of itself, and the digests of its content."""
+
+    facts: FileFacts
+    content: FileContent
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,8 +63,7 @@ class RawIndex:
     index_path : Path
         Where `save` writes.
     entries : dict
-        By path relative to the study folder: the state as three numbers, facts and digests as JSON holds
-        them.
+        By path relative to the study folder: the state as three numbers, facts and digests as texts.
     """
 
     def __init__(self, index_path: Path, entries: dict[str, Any]) -> None:
@@ -72,12 +81,15 @@ class RawIndex:
             entries = {}
         return cls(index_path, entries if isinstance(entries, dict) else {})
 
-    def remembers(self, path: Path, root: Path) -> bool:
-        """Return whether `facts` and `content` would answer without opening the file."""
-        with contextlib.suppress(RecordingError):
+    def recall(self, path: Path, root: Path) -> Surveyed | None:
+        """Return facts and digests if both are remembered for the state that `path` is in, else None."""
+        try:
             known = self._known(_name(path, root), _state(path))
-            return known is not None and {"facts", "content"} <= known.keys()
-        return False
+            if known is None:
+                return None
+            return Surveyed(_decode_facts(known["facts"]), _decode_content(known["content"]))
+        except (RecordingError, *_DAMAGE):
+            return None
 
     def facts(self, path: Path, root: Path) -> FileFacts:
         """Return what `inspect` says of `path`, from memory if the file is in the same state.
@@ -98,7 +110,7 @@ class RawIndex:
         state = _state(path)
         known = self._known(name, state)
         if known is not None:
-            with contextlib.suppress(KeyError, TypeError, ValueError, ZeroDivisionError):
+            with contextlib.suppress(*_DAMAGE):
                 return _decode_facts(known["facts"])
         facts = inspect(path)
         self._remember(name, path, state, {"facts": _encode_facts(facts)})
@@ -113,7 +125,7 @@ class RawIndex:
         state = _state(path)
         known = self._known(name, state)
         if known is not None:
-            with contextlib.suppress(KeyError, TypeError, ValueError):
+            with contextlib.suppress(*_DAMAGE):
                 return _decode_content(known["content"])
         content = content_digests(path)
         self._remember(name, path, state, {"content": _encode_content(content)})
@@ -132,7 +144,7 @@ class RawIndex:
             self._changed = False
 
     def _known(self, name: str, state: _State) -> dict[str, Any] | None:
-        entry = self._entries.get(name)
+        entry: object = self._entries.get(name)
         if isinstance(entry, dict) and entry.get("state") == state.mark:
             return entry
         return None
@@ -152,7 +164,7 @@ class RawIndex:
 
 def _state(path: Path) -> _State:
     try:
-        status = os.stat(path)
+        status = path.stat()
     except OSError as error:
         raise unreadable(path, error) from error
     settled = time.time_ns() - max(status.st_mtime_ns, status.st_ctime_ns) >= _RACY_NS
@@ -178,42 +190,44 @@ def _write_whole(target: Path, content: str) -> None:
         raise
 
 
-def _encode_facts(facts: FileFacts) -> dict[str, Any]:
-    return {
-        "channels": [
-            [one.label, None if one.rate_hz is None else str(one.rate_hz), one.unit, one.n_samples]
-            for one in facts.channels
-        ],
-        "annotations": [[one.onset_s, one.duration_s, one.text] for one in facts.annotations],
-    }
+def _encode_facts(facts: FileFacts) -> str:
+    channels = [
+        [one.label, None if one.rate_hz is None else str(one.rate_hz), one.unit, one.n_samples]
+        for one in facts.channels
+    ]
+    annotations = [[one.onset_s, one.duration_s, one.text] for one in facts.annotations]
+    return json.dumps([channels, annotations], separators=(",", ":"))
 
 
-def _decode_facts(entry: dict[str, Any]) -> FileFacts:
+# Recordings of one study are mostly built alike: equal texts share one result.
+@lru_cache(maxsize=1024)
+def _decode_facts(text: str) -> FileFacts:
+    channels, annotations = json.loads(text)
     return FileFacts(
         channels=tuple(
-            ChannelFacts(label, _rate_hz(rate_hz), unit, n_samples)
-            for label, rate_hz, unit, n_samples in entry["channels"]
+            ChannelFacts(label, None if rate_hz is None else Fraction(rate_hz), unit, n_samples)
+            for label, rate_hz, unit, n_samples in channels
         ),
-        annotations=tuple(Annotation(*row) for row in entry["annotations"]),
+        annotations=tuple(Annotation(*row) for row in annotations),
+    )
+
+
+def _encode_content(content: FileContent) -> list[str]:
+    labels = json.dumps([one.label for one in content.channels], separators=(",", ":"))
+    digests = [content.file_sha256, content.annotations_sha256, *(one.sha256 for one in content.channels)]
+    return [labels, " ".join(digests)]
+
+
+def _decode_content(entry: list[str]) -> FileContent:
+    file_sha256, annotations_sha256, *digests = entry[1].split()
+    channels = zip(_decode_labels(entry[0]), digests, strict=True)
+    return FileContent(
+        file_sha256=file_sha256,
+        annotations_sha256=annotations_sha256,
+        channels=tuple(ChannelContent(label, sha256) for label, sha256 in channels),
     )
 
 
 @lru_cache(maxsize=1024)
-def _rate_hz(text: str | None) -> Fraction | None:
-    return None if text is None else Fraction(text)
-
-
-def _encode_content(content: FileContent) -> dict[str, Any]:
-    return {
-        "file": content.file_sha256,
-        "annotations": content.annotations_sha256,
-        "channels": [[one.label, one.sha256] for one in content.channels],
-    }
-
-
-def _decode_content(entry: dict[str, Any]) -> FileContent:
-    return FileContent(
-        file_sha256=entry["file"],
-        annotations_sha256=entry["annotations"],
-        channels=tuple(ChannelContent(label, sha256) for label, sha256 in entry["channels"]),
-    )
+def _decode_labels(text: str) -> tuple[str, ...]:
+    return tuple(json.loads(text))

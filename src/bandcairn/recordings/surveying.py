@@ -3,26 +3,16 @@
 from __future__ import annotations
 
 from concurrent.futures import ThreadPoolExecutor, as_completed
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from bandcairn.errors import RecordingError
+from bandcairn.recordings.index import Surveyed
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterable
     from pathlib import Path
 
-    from bandcairn.recordings.content import FileContent
     from bandcairn.recordings.index import RawIndex
-    from bandcairn.signal import FileFacts
-
-
-@dataclass(frozen=True, slots=True)
-class Surveyed:
-    """What a file says of itself, and the digests of its content."""
-
-    facts: FileFacts
-    content: FileContent
 
 
 def survey(
@@ -45,28 +35,24 @@ def survey(
     workers : int
         Threads that read and hash.
     progress : callable, optional
-        Called after each file with the number done and the number of all, from the calling thread.
+        Called after each file that was read, with the number done and the number of all, from the calling
+        thread.
 
     Returns
     -------
     dict
         By path, in the order given. A failure of one file leaves the others alone.
     """
-    results: dict[Path, Surveyed | RecordingError | None] = dict.fromkeys(paths)
-    known = [path for path in results if index.remembers(path, root)]
-    for path in known:
-        results[path] = _look(path, root, index)
-    done = len(known)
-    if progress and done:
-        progress(done, len(results))
+    results: dict[Path, Surveyed | RecordingError | None] = {path: index.recall(path, root) for path in paths}
     unknown = [path for path, result in results.items() if result is None]
+    n_known = len(results) - len(unknown)
     with ThreadPoolExecutor(max_workers=max(1, workers)) as pool:
         tasks = {pool.submit(_look, path, root, index): path for path in unknown}
         try:
-            for done, task in enumerate(as_completed(tasks), start=done + 1):
+            for n_read, task in enumerate(as_completed(tasks), start=1):
                 results[tasks[task]] = task.result()
                 if progress:
-                    progress(done, len(results))
+                    progress(n_known + n_read, len(results))
         finally:
             pool.shutdown(wait=True, cancel_futures=True)
     return {path: result for path, result in results.items() if result is not None}
