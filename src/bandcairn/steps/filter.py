@@ -13,6 +13,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
 from itertools import groupby
 from typing import TYPE_CHECKING, Literal
 
@@ -22,8 +23,6 @@ from bandcairn.errors import StepError
 from bandcairn.signal import Signal
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
-
     from numpy.typing import ArrayLike, NDArray
 
 FilterType = Literal["lowpass", "highpass", "bandpass", "bandstop"]
@@ -153,7 +152,7 @@ def apply_stages(signal: Signal, stages: tuple[FilterStage, ...]) -> Signal:
     if not np.isfinite(signal.samples).all():
         raise StepError("filter: found samples that are not finite; one would spread over its whole run.")
     rate_hz = float(signal.rate_hz)
-    cascades = tuple(_cascades(stages, rate_hz))
+    cascades = _cascades(stages, rate_hz)
     samples = np.empty_like(signal.samples)
     for run in signal.runs:
         for cascade in cascades:
@@ -228,38 +227,44 @@ class _Cascade:
     settling: int
 
 
-def _cascades(stages: tuple[FilterStage, ...], rate_hz: float) -> Iterator[_Cascade]:
+@lru_cache(maxsize=64)
+def _cascades(stages: tuple[FilterStage, ...], rate_hz: float) -> tuple[_Cascade, ...]:
     """Join neighbouring stages of the same phase."""
+    groups = groupby(stages, key=lambda stage: stage.phase)
+    return tuple(
+        _cascade(np.concatenate([sections(stage, rate_hz) for stage in group]), phase)
+        for phase, group in groups
+    )
+
+
+def _cascade(sos: NDArray[np.float64], phase: Phase) -> _Cascade:
     from scipy.signal import sosfilt_zi
 
-    for phase, group in groupby(stages, key=lambda stage: stage.phase):
-        sos = np.concatenate([sections(stage, rate_hz) for stage in group])
-        settling = math.ceil(math.log(0.01) / math.log(_slowest_radius(sos)))
-        yield _Cascade(sos, np.asarray(sosfilt_zi(sos), np.float64), phase, settling)
+    settling = math.ceil(math.log(0.01) / math.log(_slowest_radius(sos)))
+    return _Cascade(sos, np.asarray(sosfilt_zi(sos), np.float64), phase, settling)
 
 
 def _filtered(samples: NDArray[np.float64], cascades: tuple[_Cascade, ...]) -> NDArray[np.float64]:
     """Return one channel of one run behind all cascades."""
     for cascade in cascades:
-        if cascade.phase == "causal":
-            samples = _pass(samples, cascade)
-        else:
-            pad = cascade.settling
-            forward = _pass(_extended(samples, pad), cascade)
-            samples = _pass(forward[::-1], cascade)[::-1][pad:-pad]
+        pad = cascade.settling if cascade.phase == "zero" else 0
+        extended = _extended(samples, pad)
+        _pass(extended, cascade)
+        if cascade.phase == "zero":
+            _pass(extended[::-1], cascade)
+        samples = extended[pad : len(extended) - pad]
     return samples
 
 
-def _pass(samples: NDArray[np.float64], cascade: _Cascade) -> NDArray[np.float64]:
-    """Run once over the samples, from rest at the first one."""
+def _pass(samples: NDArray[np.float64], cascade: _Cascade) -> None:
+    """Run once over the samples, in place, from rest at the first one."""
     from scipy.signal import sosfilt
 
-    filtered, _ = sosfilt(cascade.sos, samples, zi=cascade.rest * samples[0])
-    return np.asarray(filtered, np.float64)
+    samples[:], _ = sosfilt(cascade.sos, samples, zi=cascade.rest * samples[0])
 
 
 def _extended(samples: NDArray[np.float64], pad: int) -> NDArray[np.float64]:
-    """Continue the samples oddly by `pad` at both ends."""
+    """Return a copy that goes on oddly for `pad` samples beyond both ends."""
     before = 2 * samples[0] - samples[pad:0:-1]
     after = 2 * samples[-1] - samples[-2 : -pad - 2 : -1]
     return np.concatenate([before, samples, after])
