@@ -163,8 +163,10 @@ def _steepness(samples: NDArray[np.float64], rate_hz: float) -> NDArray[np.float
 def _moving_mean(values: NDArray[np.float64], width: float) -> NDArray[np.float64]:
     """Average over the nearest odd number of samples, centred; the ends are extended by their values."""
     half = int(width / 2)
-    running = np.cumsum(np.pad(values, (half + 1, half), mode="edge"))
-    mean: NDArray[np.float64] = (running[2 * half + 1 :] - running[: -2 * half - 1]) / (2 * half + 1)
+    running = np.pad(values, (half + 1, half), mode="edge")
+    np.cumsum(running, out=running)
+    mean: NDArray[np.float64] = running[2 * half + 1 :] - running[: -2 * half - 1]
+    mean /= 2 * half + 1
     return mean
 
 
@@ -173,8 +175,8 @@ def _candidates(steepness_uv: NDArray[np.float64], rate_hz: float) -> _Candidate
     reach = round(_REFRACTORY_S * rate_hz)
     largest = _moving_max(steepness_uv, reach)
     index = np.flatnonzero((steepness_uv == largest) & (steepness_uv > _LEAST_SLOPE_UV))
-    # Equal neighbours on a plateau are one maximum.
-    index = index[np.diff(index, prepend=-reach - 1) > 1]
+    # Equal values within one reach are one maximum.
+    index = index[np.diff(index, prepend=-reach - 1) > reach]
     slope_uv, level_uv = steepness_uv[index], _beat_level(steepness_uv, index, rate_hz)
     noise_uv = _noise_level(slope_uv, slope_uv < _THRESHOLD * level_uv)
     return _Candidates(index, slope_uv, level_uv, noise_uv + _THRESHOLD * (level_uv - noise_uv))

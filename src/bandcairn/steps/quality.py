@@ -82,10 +82,11 @@ def assess(
     """
     if samples.shape[-1] == 0:
         raise StepError("found a recording without samples; its quality cannot be assessed")
+    low, high = np.min(samples, axis=-1), np.max(samples, axis=-1)
     rests = [_rests(channel) for channel in samples]
     clipped = [
-        _clipped_lengths(rest, channel, limits)
-        for rest, channel, limits in zip(rests, samples, digital_limits, strict=True)
+        _clipped_lengths(rest, float(lowest), float(highest), limits)
+        for rest, lowest, highest, limits in zip(rests, low, high, digital_limits, strict=True)
     ]
     flat = [rest.n_samples[rest.n_samples >= LEAST_FLAT_S * rate_hz] for rest in rests]
     n_samples = samples.shape[-1]
@@ -94,7 +95,7 @@ def assess(
         clipped_longest_s=_longest(clipped) / rate_hz,
         flat_share=_total(flat) / n_samples,
         flat_longest_s=_longest(flat) / rate_hz,
-        peak_to_peak_uv=np.ptp(samples, axis=-1),
+        peak_to_peak_uv=high - low,
         rms_uv=np.std(samples, axis=-1),
     )
 
@@ -109,10 +110,9 @@ def _rests(samples: NDArray[np.float64]) -> _Rests:
 
 
 def _clipped_lengths(
-    rests: _Rests, samples: NDArray[np.float64], limits: tuple[float, float] | None
+    rests: _Rests, low: float, high: float, limits: tuple[float, float] | None
 ) -> NDArray[np.int64]:
-    """Return the numbers of samples of those rests that are clipped."""
-    low, high = float(np.min(samples)), float(np.max(samples))
+    """Return the numbers of samples of those rests that are clipped; `low` and `high` are the extremes."""
     if low == high:
         return rests.n_samples[:0]
     if limits is not None:
