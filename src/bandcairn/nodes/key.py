@@ -72,7 +72,7 @@ def recipe_json(
     raw : iterable of str
         Digests of the raw content that the step reads, in the order of the channels.
     """
-    by_role = ",".join(f"{json.dumps(role, ensure_ascii=False)}:\"{key}\"" for role, key in sorted(parents))
+    by_role = ",".join(f'{json.dumps(role, ensure_ascii=False)}:"{key}"' for role, key in sorted(parents))
     digests = ",".join(f'"{digest}"' for digest in raw)
     return (
         f'{{"key_format":{KEY_FORMAT},"parameters":{parameters},"parents":{{{by_role}}},'

@@ -110,7 +110,7 @@ def plan_study_nodes(
     }
     tables = {name: table for name, (_, table) in pairs.items()}
     statistics = [
-        _statistics_node(family, questions, tables) for family, questions in families(study).items()
+        _statistics_node(family, questions, study, tables) for family, questions in families(study).items()
     ]
     return {node.key: node for node in (*(node for pair in pairs.values() for node in pair), *statistics)}
 
@@ -124,6 +124,11 @@ def families(study: LoadedStudy) -> dict[str, tuple[Question, ...]]:
     return grouped
 
 
+def design_columns(study: LoadedStudy) -> tuple[str, ...]:
+    """Return the design columns of the recordings table, in their order."""
+    return tuple(study.recordings[0].design)
+
+
 class _SignalChain:
     """The nodes of one signal; what all recordings share is put into canonical JSON once."""
 
@@ -134,12 +139,10 @@ class _SignalChain:
         self.declared = signal.load or study.description.load
         self.filter = canonical_json({"stages": [stage.model_dump(mode="json") for stage in signal.filter]})
         self.spectrum = canonical_json({"kind": signal.kind, **signal.spectrum.model_dump(mode="json")})
-        self.features = canonical_json(
-            {"kind": signal.kind, "epoch_length_s": signal.epoch.length_s, **signal.features.model_dump(mode="json")}
-        )
+        self.features = canonical_json({"kind": signal.kind, **signal.features.model_dump(mode="json")})
         self.load_parameters = cache(self._load_parameters)
         self.epoch_parameters = cache(self._epoch_parameters)
-        self.segments_of = cache(study.segments_of)
+        self.segments = _segments_by_recording(study)
 
     def nodes(self, row: RecordingRow, content: RawContent) -> Iterator[Node]:
         """Yield the nodes of one recording, parents first."""
@@ -198,7 +201,7 @@ class _SignalChain:
         return rate_hz, self.declared.unit if facts.unit is None else None
 
     def _segments(self, row: RecordingRow, content: RawContent) -> tuple[tuple[str, float, float], ...]:
-        declared = self.segments_of(row.recording) or content.annotated_segments
+        declared = self.segments.get(row.recording, ()) or content.annotated_segments
         wanted = self.signal.segments
         return tuple(segment for segment in declared if wanted is None or segment[0] in wanted)
 
@@ -219,6 +222,15 @@ class _SignalChain:
         return canonical_json({**self.signal.epoch.model_dump(mode="json"), "segments": segments})
 
 
+def _segments_by_recording(study: LoadedStudy) -> dict[str, tuple[tuple[str, float, float], ...]]:
+    """Return name, start and stop of each recording's segments, in the order of time."""
+    segments: dict[str, tuple[tuple[str, float, float], ...]] = {}
+    for row in sorted(study.segments, key=lambda row: (row.start_s, row.stop_s, row.segment)):
+        present = segments.get(row.recording, ())
+        segments[row.recording] = (*present, (row.segment, row.start_s, row.stop_s))
+    return segments
+
+
 def _signal_nodes(
     name: str,
     signal: SignalDescription,
@@ -235,30 +247,41 @@ def _signal_nodes(
             rows.append({"recording": row.recording, "participant": row.participant, "design": row.design})
             for step, key in found.items():
                 keys[step].append((f"{step}/{row.recording}", key))
+    limits = signal.quality.model_dump(mode="json", exclude={"on_failure"})
     verdict = make_node(
         "verdict",
-        parameters=canonical_json({"signal": name, "limits": signal.quality.model_dump(mode="json")}),
+        parameters=canonical_json({"signal": name, "limits": limits}),
         parents=tuple(keys["quality"]),
         signal=name,
     )
+    parameters = {"design": design_columns(study), "on_failure": signal.quality.on_failure, "rows": rows}
     table = make_node(
         "table",
-        parameters=canonical_json({"signal": name, "kind": signal.kind, "rows": rows}),
+        parameters=canonical_json(parameters),
         parents=(*keys["features"], ("verdict", verdict.key)),
         signal=name,
     )
     return verdict, table
 
 
-def _statistics_node(family: str, questions: tuple[Question, ...], tables: Mapping[str, Node]) -> Node:
+def _statistics_node(
+    family: str, questions: tuple[Question, ...], study: LoadedStudy, tables: Mapping[str, Node]
+) -> Node:
+    signals = study.description.signals
     parameters = {
         "family": family,
         "adjustment": "holm",
-        "questions": [question.model_dump(mode="json", exclude={"family"}) for question in questions],
+        "questions": [_question(question, signals[question.signal].channels) for question in questions],
     }
-    signals = sorted({question.signal for question in questions})
+    asked = sorted({question.signal for question in questions})
     return make_node(
         "statistics",
         parameters=canonical_json(parameters),
-        parents=tuple((f"table/{signal}", tables[signal].key) for signal in signals),
+        parents=tuple((f"table/{signal}", tables[signal].key) for signal in asked),
     )
+
+
+def _question(question: Question, channels: tuple[str, ...]) -> dict[str, Any]:
+    """Return a question with the names of its channels written out."""
+    named = channels if isinstance(question.channels, str) else question.channels
+    return {**question.model_dump(mode="json", exclude={"family"}), "channel_names": named}

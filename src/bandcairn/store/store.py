@@ -126,7 +126,9 @@ def _verify_written(path: Path, frame: Frame, key: str) -> None:
         _equal(written.columns[name], column) for name, column in frame.columns.items()
     )
     if not same:
-        raise DamagedNodeError(f"node {key[:12]} reads back otherwise than it was written; is the disk sound?")
+        raise DamagedNodeError(
+            f"node {key[:12]} reads back otherwise than it was written; is the disk sound?"
+        )
 
 
 def _equal(first: Any, second: Any) -> bool:  # noqa: ANN401 - a column of either kind

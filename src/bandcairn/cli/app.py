@@ -1,0 +1,76 @@
+"""The commands, and the one place where errors become exit codes."""
+
+from __future__ import annotations
+
+import os
+import sys
+
+import click
+import typer
+
+from bandcairn.cli import check, demo, plan, prune, run
+from bandcairn.cli.console import print_error
+from bandcairn.errors import BandcairnError, DamagedNodeError, EngineError
+
+DONE, ANSWER_IS_NO, STUDY_AT_FAULT, SOME_FAILED, FAULT, INTERRUPTED = 0, 1, 2, 3, 70, 130
+
+app = typer.Typer(
+    name="bandcairn",
+    help="From EEG, ECG and surface EMG recordings to the feature table and the group statistics of a paper.\n\n"
+    "For research use only: no result is a diagnosis.",
+    epilog="Start with: bandcairn demo",
+    no_args_is_help=True,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    add_completion=True,
+)
+for module in (demo, check, plan, run, prune):
+    module.register(app)
+
+
+def run_app() -> None:
+    """Run the command line and leave with its exit code."""
+    sys.exit(exit_code_of(sys.argv[1:]))
+
+
+def exit_code_of(arguments: list[str]) -> int:
+    """Run one command and return its exit code: 0 done, 2 study at fault, 3 some failed, 70 our fault, 130 interrupted.
+
+    Parameters
+    ----------
+    arguments : list of str
+        What stands after the name of the program.
+    """
+    as_json = "--json" in arguments
+    try:
+        code = app(arguments, standalone_mode=False)
+    except click.exceptions.Abort:
+        return INTERRUPTED
+    except click.ClickException as error:
+        error.show()
+        return STUDY_AT_FAULT
+    except KeyboardInterrupt:
+        print_error("interrupted; what was computed is kept: run again to go on", as_json=as_json)
+        return INTERRUPTED
+    except (EngineError, DamagedNodeError) as error:
+        print_error(error, as_json=as_json)
+        return FAULT
+    except BandcairnError as error:
+        print_error(error, as_json=as_json)
+        return STUDY_AT_FAULT
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return DONE
+    except Exception as error:  # noqa: BLE001 - a user meets a sentence, whatever went wrong
+        print_error(fault_sentence(error), as_json=as_json)
+        return FAULT
+    return code if isinstance(code, int) else DONE
+
+
+def fault_sentence(error: Exception) -> str:
+    """Return what to say of a fault of bandcairn itself, with the place of the code."""
+    import traceback
+
+    place = traceback.extract_tb(error.__traceback__)[-1]
+    where = f"{os.path.basename(place.filename)}, line {place.lineno}"  # noqa: PTH119 - a name only, no path
+    return f"a fault of bandcairn: {type(error).__name__}: {error} ({where}). Please report it."

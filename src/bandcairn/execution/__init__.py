@@ -1,0 +1,1 @@
+"""Carrying the plan out: where nodes, recordings, steps and store meet."""

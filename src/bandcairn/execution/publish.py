@@ -1,0 +1,294 @@
+"""The results: what the paper prints, gathered from the nodes and written as a whole."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from bandcairn.nodes.plan import design_columns
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator, Mapping, Sequence
+    from pathlib import Path
+
+    from bandcairn.execution.project import Project
+    from bandcairn.execution.worker import Failure
+    from bandcairn.nodes.node import Node
+    from bandcairn.store.store import Store
+
+RUN_FILE = "run.json"
+_EXCLUSIONS_SCHEMA = {
+    "recording": "text",
+    "signal": "text",
+    "channel": "text",
+    "segment": "text",
+    "what": "text",
+    "count": "count",
+    "total": "count",
+    "reason": "text",
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """What a run has come to.
+
+    Attributes
+    ----------
+    failures : tuple of Failure
+        What could not be computed; empty if all is done.
+    """
+
+    failures: tuple[Failure, ...]
+
+    @classmethod
+    def of_run(cls, run: Mapping[str, Any]) -> Outcome:
+        """Return the outcome that a run has written down."""
+        from bandcairn.execution.worker import Failure
+
+        return cls(tuple(Failure(**failure) for failure in run["failures"]))
+
+    @property
+    def failed_recordings(self) -> tuple[str, ...]:
+        """Names of the recordings with a failure, sorted."""
+        return tuple(sorted({failure.recording for failure in self.failures}))
+
+    @property
+    def failed_sentence(self) -> str:
+        """How many recordings have failed, in words."""
+        names = self.failed_recordings
+        counted = "1 recording has failed" if len(names) == 1 else f"{len(names)} recordings have failed"
+        return f"{counted}: {', '.join(names[:5])}{', …' if len(names) > 5 else ''}"
+
+
+def published(project: Project) -> bool:
+    """Tell whether the results on disk are those of the plan, each file as it was written."""
+    run = read_run(project.results_folder)
+    if run.get("plan") != project.plan.id:
+        return False
+    files: Mapping[str, str] = run["files"]
+    return all(_sha256(project.results_folder / name) == digest for name, digest in files.items())
+
+
+def read_run(results: Path) -> dict[str, Any]:
+    """Return what the last run has written of itself; empty if there was none."""
+    try:
+        run = json.loads((results / RUN_FILE).read_text("utf-8"))
+    except (OSError, ValueError):
+        return {}
+    return run if isinstance(run, dict) else {}
+
+
+def publish(
+    project: Project,
+    study_nodes: Sequence[Node],
+    store: Store,
+    records: Mapping[str, Mapping[str, Any]],
+    failures: Sequence[Failure],
+) -> Outcome:
+    """Write the results of a study.
+
+    Parameters
+    ----------
+    project : Project
+        The study.
+    study_nodes : sequence of Node
+        Its tables and statistics as far as recordings have succeeded.
+    store : Store
+        Holds the nodes.
+    records : mapping of str to mapping
+        Provenance records of the nodes that this run has computed, by key.
+    failures : sequence of Failure
+        What this run could not compute.
+
+    Returns
+    -------
+    Outcome
+    """
+    from bandcairn.execution.group_nodes import STATISTICS_COLUMNS, VERDICT_COLUMNS
+    from bandcairn.provenance.ledger import LEDGER_SCHEMA
+    from bandcairn.store.tables import write_table
+
+    failures = (*_unreadable(project), *failures)
+    frames = {node.key: _rows(store, node) for node in study_nodes}
+    features = _features(
+        project,
+        [
+            row | {"signal": node.signal}
+            for node in study_nodes
+            if node.step == "table"
+            for row in frames[node.key]
+        ],
+    )
+    verdicts = [row for node in study_nodes if node.step == "verdict" for row in frames[node.key]]
+    statistics = [
+        row | {"node": node.key}
+        for node in study_nodes
+        if node.step == "statistics"
+        for row in frames[node.key]
+    ]
+    tables = {
+        "features": (_features_schema(project), features),
+        "statistics": (STATISTICS_COLUMNS | {"node": "text"}, _in_order_of_questions(project, statistics)),
+        "quality": (VERDICT_COLUMNS | {"passed": "yes_no"}, [_with_truth(row) for row in verdicts]),
+        "exclusions": (_EXCLUSIONS_SCHEMA, list(_exclusions(project, features, verdicts, failures))),
+        "ledger": (LEDGER_SCHEMA, _ledger(project, study_nodes, store, records)),
+    }
+    files = [
+        path
+        for name, (schema, rows) in tables.items()
+        for path in write_table(project.results_folder, name, schema, rows)
+    ]
+    _write_run(project, files, failures, len(records))
+    return Outcome(tuple(failures))
+
+
+def _rows(store: Store, node: Node) -> list[dict[str, Any]]:
+    from bandcairn.execution.group_nodes import frame_rows
+
+    return frame_rows(store.get(node.step, node.key))
+
+
+def _features_schema(project: Project) -> dict[str, str]:
+    return {
+        "recording": "text",
+        "participant": "text",
+        **dict.fromkeys(design_columns(project.study), "text"),
+        "signal": "text",
+        "channel": "text",
+        "segment": "text",
+        "feature": "text",
+        "band": "text",
+        "value": "number",
+        "unit": "text",
+        "epochs_used": "count",
+        "epochs_total": "count",
+        "note": "text",
+        "node": "text",
+    }
+
+
+def _features(project: Project, rows: Sequence[Mapping[str, Any]]) -> list[dict[str, Any]]:
+    """Return the feature rows as the contract has them, sorted by their columns; the counts ride along."""
+    from bandcairn.execution.group_nodes import DESIGN
+
+    design = design_columns(project.study)
+    told = [{**row, **{name: row[f"{DESIGN}{name}"] for name in design}} for row in rows]
+    order = ("recording", "participant", *design, "signal", "channel", "segment", "feature", "band")
+    return sorted(told, key=lambda row: tuple(row[column] or "" for column in order))
+
+
+def _in_order_of_questions(project: Project, rows: Sequence[dict[str, Any]]) -> list[dict[str, Any]]:
+    place = {question.name: index for index, question in enumerate(project.study.description.questions)}
+    return sorted(rows, key=lambda row: place[row["question"]])
+
+
+def _with_truth(row: Mapping[str, Any]) -> dict[str, Any]:
+    return {**row, "passed": {"yes": True, "no": False, None: None}[row["passed"]]}
+
+
+def _unreadable(project: Project) -> list[Failure]:
+    """Return the recordings whose raw file cannot be read: they have no node that could fail."""
+    from bandcairn.execution.worker import Failure
+
+    return [Failure(name, "", "load", reason) for name, reason in sorted(project.survey.unreadable.items())]
+
+
+def _exclusions(
+    project: Project,
+    features: Sequence[Mapping[str, Any]],
+    verdicts: Sequence[Mapping[str, Any]],
+    failures: Sequence[Failure],
+) -> Iterator[dict[str, Any]]:
+    """Yield all that was left out: recordings that failed, channels beyond a limit, rejected epochs."""
+    for failure in failures:
+        what = "recording" if not failure.signal else "signal"
+        yield _left_out(
+            failure.recording, failure.signal, "", "", what, 1, 1, f"{failure.step}: {failure.reason}"
+        )
+    for row in verdicts:
+        if row["passed"] == "no":
+            signal = project.study.description.signals[row["signal"]]
+            what = "channel" if signal.quality.on_failure == "exclude" else "channel, kept"
+            reason = f"{row['measure']} {row['value']:.3g} is above {row['limit']:g}"
+            yield _left_out(row["recording"], row["signal"], row["channel"], "", what, 1, 1, reason)
+    seen = set()
+    for row in features:
+        place = (row["recording"], row["signal"], row["channel"], row["segment"] or "")
+        if place not in seen:
+            seen.add(place)
+            yield from _rejected_epochs(project, row, place)
+
+
+def _rejected_epochs(
+    project: Project, row: Mapping[str, Any], place: tuple[str, str, str, str]
+) -> Iterator[dict[str, Any]]:
+    reject = project.study.description.signals[row["signal"]].epoch.reject
+    if reject is None:
+        return
+    rules = (
+        (row["too_large"], f"peak to peak above {reject.peak_to_peak_uv} uV"),
+        (row["too_flat"], f"peak to peak below {reject.flat_uv} uV"),
+    )
+    for count, reason in rules:
+        if count:
+            yield _left_out(*place, "epoch", count, row["epochs_total"], reason)
+
+
+def _left_out(
+    recording: str, signal: str, channel: str, segment: str, what: str, count: int, total: int, reason: str
+) -> dict[str, Any]:
+    return {
+        "recording": recording,
+        "signal": signal or None,
+        "channel": channel or None,
+        "segment": segment or None,
+        "what": what,
+        "count": count,
+        "total": total,
+        "reason": reason,
+    }
+
+
+def _ledger(
+    project: Project, study_nodes: Sequence[Node], store: Store, records: Mapping[str, Mapping[str, Any]]
+) -> list[dict[str, Any]]:
+    """Return the rows of the ledger: what this run knows, what the last ledger knew, else what the file says."""
+    from bandcairn.provenance.ledger import ledger_rows, read_ledger, records_of
+    from bandcairn.store.layout import present_keys
+
+    nodes = [*project.plan.recording_nodes.values(), *study_nodes]
+    present = present_keys(store.folder, nodes)
+    known = {**records_of(read_ledger(project.results_folder)), **records}
+    stored = [node for node in nodes if node.key in present]
+    told = {node.key: known.get(node.key) or store.record(node.step, node.key) for node in stored}
+    return ledger_rows(stored, told)
+
+
+def _write_run(project: Project, files: Sequence[Path], failures: Sequence[Failure], computed: int) -> None:
+    from dataclasses import asdict
+
+    from bandcairn.provenance.record import now, software
+    from bandcairn.store.tables import replace_file
+
+    run = {
+        "plan": project.plan.id,
+        "finished": now().isoformat(timespec="seconds"),
+        "nodes": len(project.plan.nodes),
+        "computed": computed,
+        "failures": [asdict(failure) for failure in failures],
+        "software": software(),
+        "files": {path.name: _sha256(path) for path in files},
+    }
+    text = json.dumps(run, indent=2, ensure_ascii=False) + "\n"
+    replace_file(project.results_folder / RUN_FILE, lambda path: path.write_text(text, "utf-8"))
+
+
+def _sha256(path: Path) -> str:
+    try:
+        with path.open("rb") as file:
+            return hashlib.file_digest(file, "sha256").hexdigest()
+    except OSError:
+        return ""

@@ -1,0 +1,142 @@
+"""What the Snakefile calls: which receipts are wanted, which a job needs first, and the work of one job.
+
+A receipt says that a batch has been through a step. It hands the order of the jobs to the engine, and the records and
+failures of the batch to the last job; the nodes themselves decide whether anything is to be done. Receipts live for
+one run.
+"""
+
+from __future__ import annotations
+
+import shutil
+from functools import cached_property
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from bandcairn.errors import EngineError
+from bandcairn.execution.batches import make_batches
+from bandcairn.execution.progress import reporter
+from bandcairn.execution.project import open_project
+from bandcairn.execution.publish import publish, published
+from bandcairn.store.layout import STORE_NAME, make_private_folder
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Sequence
+
+    from bandcairn.execution.project import Project
+    from bandcairn.execution.worker import Work, Worker
+    from bandcairn.nodes.node import Node
+
+# Relative to the study folder, which is the working directory of every job.
+RECEIPTS = f"{STORE_NAME}/.receipts"
+
+
+class Wiring:
+    """The study in the engine's working directory, as the rules see it.
+
+    Parameters
+    ----------
+    project : Project
+        The opened study.
+    """
+
+    def __init__(self, project: Project) -> None:
+        self.project = project
+        self.batches = make_batches(project.plan.recording_nodes.values())
+
+    @property
+    def batch_pattern(self) -> str:
+        """A pattern that no name but those of the batches can match."""
+        return "|".join(self.batches) or "none"
+
+    @property
+    def plan_id(self) -> str:
+        """The short name of the plan."""
+        return self.project.plan.id
+
+    @cached_property
+    def worker(self) -> Worker:
+        """The worker that all jobs of this process share."""
+        from bandcairn.execution.worker import Worker
+
+        return Worker(self.project, reporter())
+
+    def wanted(self) -> list[str]:
+        """Return the final receipt, or nothing when all nodes and results stand."""
+        stands = not self.project.missing() and published(self.project)
+        return [] if stands else [receipt("results", self.project.plan.id)]
+
+    def needed_by(self, step: str) -> Callable[[Any], list[str]]:
+        """Return the input function of a step's rule: the receipt of the step before, for the same batch."""
+
+        def needed(wildcards: Any) -> list[str]:  # noqa: ANN401 - the engine's own type
+            batch = self.batches[wildcards.batch]
+            before = batch.before(step)
+            return [] if before is None else [receipt(before, batch.name)]
+
+        return needed
+
+    def unfinished(self, _: Any = None) -> list[str]:  # noqa: ANN401
+        """Return the last receipts of the batches that have something missing."""
+        missing = {node.key for node in self.project.missing()}
+        return [
+            receipt(batch.last_step, batch.name)
+            for batch in self.batches.values()
+            if any(node.key in missing for nodes in batch.steps.values() for node in nodes)
+        ]
+
+    def carry_out(self, step: str, batch: str, receipt_path: str) -> None:
+        """Do the work of one job: take a batch through a step."""
+        work = self.worker.work(self.batches[batch].steps[step])
+        _write_receipt(receipt_path, work)
+
+    def carry_out_study(self, step: str, receipt_path: str) -> None:
+        """Do the work of one job of the study: tables or statistics over what has been computed."""
+        work = self.worker.work(node for node in self._study_nodes() if node.step == step)
+        _write_receipt(receipt_path, work)
+
+    def publish(self, receipt_path: str) -> None:
+        """Write the results.
+
+        Raises
+        ------
+        EngineError
+            After the results have been written, if a recording has failed: the engine's run shall not look clean.
+        """
+        from bandcairn.execution.worker import Work
+
+        receipts = [path for path in sorted(Path(RECEIPTS).glob("*/*.json")) if path.stem in self._names]
+        works = [Work.from_json(path.read_text("utf-8")) for path in receipts]
+        failures = [failure for work in works for failure in work.failures]
+        records = {record["key"]: record for work in works for record in work.records}
+        outcome = publish(self.project, self._study_nodes(), self.worker.store, records, failures)
+        if outcome.failures:
+            raise EngineError(f"results written, but {outcome.failed_sentence}; see results/exclusions.csv")
+        _write_receipt(receipt_path, Work([], []))
+
+    @property
+    def _names(self) -> set[str]:
+        """Names of the receipts of this plan; others are left from a run that was killed."""
+        return {*self.batches, self.plan_id}
+
+    def _study_nodes(self) -> Sequence[Node]:
+        return self.worker.plan_study_nodes()
+
+
+def open_wiring() -> Wiring:
+    """Open the study in the working directory, as the engine has set it."""
+    return Wiring(open_project(Path.cwd()))
+
+
+def receipt(step: str, name: str) -> str:
+    """Return the path of a receipt, relative to the study."""
+    return f"{RECEIPTS}/{step}/{name}.json"
+
+
+def clear_receipts(study_folder: Path) -> None:
+    """Remove the receipts of earlier runs."""
+    shutil.rmtree(study_folder / RECEIPTS, ignore_errors=True)
+
+
+def _write_receipt(path: str, work: Work) -> None:
+    make_private_folder(Path(path).parent)
+    Path(path).write_text(work.to_json(), "utf-8")

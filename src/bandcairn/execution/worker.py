@@ -1,0 +1,148 @@
+"""Carrying out nodes: fetch the parents, compute, record, put. One node's failure stays its own."""
+
+from __future__ import annotations
+
+import json
+import traceback
+from dataclasses import asdict, dataclass
+from time import perf_counter
+from typing import TYPE_CHECKING, Any
+
+from bandcairn.errors import DamagedNodeError, RecordingError
+from bandcairn.execution.compute import compute
+from bandcairn.nodes.plan import plan_study_nodes
+from bandcairn.provenance.record import make_record, now
+from bandcairn.store.layout import present_keys
+from bandcairn.store.store import Store
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Iterable
+
+    from bandcairn.execution.project import Project
+    from bandcairn.nodes.node import Node
+    from bandcairn.store.frame import Frame
+
+
+@dataclass(frozen=True, slots=True)
+class Failure:
+    """A node that could not be computed.
+
+    Attributes
+    ----------
+    recording, signal, step : str
+        Where.
+    reason : str
+        Why, for a user.
+    fault : str
+        Empty, or the traceback of a fault of bandcairn itself.
+    """
+
+    recording: str
+    signal: str
+    step: str
+    reason: str
+    fault: str = ""
+
+
+class _ParentFailedError(RecordingError):
+    """A node above has failed; its own failure is the one to tell."""
+
+
+class Worker:
+    """Computes nodes of one opened study. Safe to share between threads that work on different recordings.
+
+    Parameters
+    ----------
+    project : Project
+        The opened study.
+    report : callable
+        Called with each node that has been dealt with and the seconds it took.
+    """
+
+    def __init__(self, project: Project, report: Callable[[Node, float], None] = lambda *_: None) -> None:
+        self.project = project
+        self.store = Store(project.store_folder)
+        self._report = report
+        self._nodes = project.plan.nodes
+        self._failed: set[str] = set()
+
+    def work(self, nodes: Iterable[Node]) -> Work:
+        """Compute those of the nodes that are missing.
+
+        Returns
+        -------
+        Work
+            The records of the nodes computed, and the failures.
+        """
+        done = Work([], [])
+        for node in nodes:
+            if self.store.has(node.step, node.key):
+                continue
+            try:
+                self._make(node, done.records)
+            except _ParentFailedError:
+                self._failed.add(node.key)
+            except RecordingError as error:
+                self._fail(node, done, str(error))
+            except Exception as error:  # noqa: BLE001 - a fault in one recording must not stop the others
+                fault = traceback.format_exc()
+                self._fail(node, done, f"fault of bandcairn: {type(error).__name__}: {error}", fault)
+        return done
+
+    def plan_study_nodes(self) -> list[Node]:
+        """Return the tables and statistics over the recordings whose features exist now, parents first."""
+        recording_nodes = self.project.plan.recording_nodes
+        present = present_keys(self.store.folder, recording_nodes.values())
+        planned = plan_study_nodes(self.project.study, self.project.plan.slots, present.__contains__)
+        self._nodes.update(planned)
+        return list(planned.values())
+
+    def _fail(self, node: Node, done: Work, reason: str, fault: str = "") -> None:
+        self._failed.add(node.key)
+        done.failures.append(Failure(node.recording, node.signal, node.step, reason, fault))
+
+    def _make(self, node: Node, records: list[dict[str, Any]]) -> Frame:
+        parents = {role: self._frame(key, records) for role, key in node.parents}
+        started, clock = now(), perf_counter()
+        frame = compute(node, parents, self.project)
+        seconds = perf_counter() - clock
+        records.append(self.store.put(node.step, node.key, frame, make_record(node, started, seconds)))
+        self._report(node, seconds)
+        return frame
+
+    def _frame(self, key: str, records: list[dict[str, Any]]) -> Frame:
+        """Return a parent's data; a damaged or lost parent is computed anew."""
+        if key in self._failed:
+            raise _ParentFailedError(key)
+        node = self._nodes[key]
+        try:
+            return self.store.get(node.step, key)
+        except DamagedNodeError:
+            self.store.remove(node.step, key)
+            return self._make(node, records)
+
+
+@dataclass(frozen=True, slots=True)
+class Work:
+    """What came of a batch.
+
+    Attributes
+    ----------
+    records : list of dict
+        Provenance records of the nodes that were computed.
+    failures : list of Failure
+        The nodes that could not be.
+    """
+
+    records: list[dict[str, Any]]
+    failures: list[Failure]
+
+    def to_json(self) -> str:
+        """Return the work as the text of a receipt."""
+        return json.dumps({"records": self.records, "failures": [asdict(f) for f in self.failures]})
+
+    @classmethod
+    def from_json(cls, text: str) -> Work:
+        """Return the work that a receipt tells of."""
+        told = json.loads(text)
+        return cls(told["records"], [Failure(**failure) for failure in told["failures"]])

@@ -1,0 +1,172 @@
+"""What the raw files of a study hold, each looked at once: facts, checks against the study, digests."""
+
+from __future__ import annotations
+
+import os
+from contextlib import contextmanager
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from bandcairn.errors import RecordingError, StudyError
+from bandcairn.recordings import RawIndex, survey
+from bandcairn.study.facts_check import check_facts
+from bandcairn.study.models import AnnotationSegments
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Iterator
+    from fractions import Fraction
+    from pathlib import Path
+
+    from bandcairn.signal import ChannelFacts, FileFacts
+    from bandcairn.study.description import LoadedStudy
+
+    Progress = Callable[[int, int], None]
+
+INDEX_NAME = "raw_index.json"
+
+
+@dataclass(frozen=True, slots=True)
+class RawContent:
+    """What the raw file of one recording holds.
+
+    Attributes
+    ----------
+    facts : FileFacts
+        What it says of itself.
+    digests : dict of str to str
+        SHA-256 of the content of each channel by its label.
+    annotated_segments : tuple of (str, float, float)
+        Name, start and stop in seconds of the segments that its annotations declare.
+    """
+
+    facts: FileFacts
+    digests: dict[str, str]
+    annotated_segments: tuple[tuple[str, float, float], ...]
+
+    def facts_of(self, label: str) -> ChannelFacts:
+        """Return the facts of a channel that is known to be there."""
+        return next(channel for channel in self.facts.channels if channel.label == label)
+
+    def rate_hz(self, label: str, declared_hz: float | None) -> Fraction | float | None:
+        """Return a channel's own rate, else the declared one."""
+        own = self.facts_of(label).rate_hz
+        return declared_hz if own is None else own
+
+
+@dataclass(frozen=True, slots=True)
+class Survey:
+    """What was found in all raw files of a study.
+
+    Attributes
+    ----------
+    contents : dict of str to RawContent
+        By recording.
+    unreadable : dict of str to str
+        Why the file of a recording cannot be read.
+    """
+
+    contents: dict[str, RawContent]
+    unreadable: dict[str, str]
+    _paths: dict[str, Path]
+    _states: dict[str, tuple[int, int, int]]
+
+    @contextmanager
+    def unchanged_file(self, recording: str) -> Iterator[Path]:
+        """Give the raw file of a recording, and refuse what was read if the file is no longer as surveyed."""
+        path = self._paths[recording]
+        yield path
+        if _state(path) != self._states[recording]:
+            raise RecordingError(f"{path.name} has changed while the study was running; run again")
+
+
+def survey_study(study: LoadedStudy, store: Path, progress: Progress | None = None) -> Survey:
+    """Look at every raw file, check the study against them, and digest their content.
+
+    What is known of a file in the same state (size and times) is not read again.
+
+    Parameters
+    ----------
+    study : LoadedStudy
+        The study.
+    store : Path
+        Where the memory of the files lies.
+    progress : callable, optional
+        Called with the number of files digested and their total.
+
+    Returns
+    -------
+    Survey
+
+    Raises
+    ------
+    StudyError
+        With every way in which the study does not fit its files.
+    """
+    index = RawIndex.load(store / INDEX_NAME)
+    facts, unreadable = inspect_files(study, index)
+    paths = {row.recording: study.folder / row.file for row in study.recordings}
+    states = {recording: _state(paths[recording]) for recording in facts}
+    wanted = [paths[recording] for recording in facts]
+    found = survey(wanted, study.folder, index, os.cpu_count() or 1, progress)
+    index.save()
+    contents = {}
+    for recording in facts:
+        result = found[paths[recording]]
+        if isinstance(result, RecordingError):
+            unreadable[recording] = str(result)
+        else:
+            digests = {channel.label: channel.sha256 for channel in result.content.channels}
+            contents[recording] = RawContent(result.facts, digests, _annotated(study, result.facts))
+    return Survey(contents, unreadable, paths, states)
+
+
+def inspect_files(study: LoadedStudy, index: RawIndex) -> tuple[dict[str, FileFacts], dict[str, str]]:
+    """Read what each file says of itself, and check the study against it.
+
+    Parameters
+    ----------
+    study : LoadedStudy
+        The study.
+    index : RawIndex
+        The memory of the files; taught, not saved.
+
+    Returns
+    -------
+    tuple of dict
+        The facts by recording, and why the file of a recording cannot be read.
+
+    Raises
+    ------
+    StudyError
+        With every way in which the study does not fit its files.
+    """
+    facts: dict[str, FileFacts] = {}
+    unreadable: dict[str, str] = {}
+    for row in study.recordings:
+        try:
+            facts[row.recording] = index.facts(study.folder / row.file, study.folder)
+        except RecordingError as error:
+            unreadable[row.recording] = str(error)
+    problems = check_facts(study, facts)
+    if problems:
+        raise StudyError(problems)
+    return facts, unreadable
+
+
+def _annotated(study: LoadedStudy, facts: FileFacts) -> tuple[tuple[str, float, float], ...]:
+    wanted = study.description.segments
+    if not isinstance(wanted, AnnotationSegments):
+        return ()
+    return tuple(
+        (mark.text, mark.onset_s, mark.onset_s + mark.duration_s)
+        for mark in facts.annotations
+        if mark.text in wanted.annotations and mark.duration_s > 0
+    )
+
+
+def _state(path: Path) -> tuple[int, int, int]:
+    try:
+        status = path.stat()
+    except OSError:
+        return (-1, 0, 0)
+    return status.st_size, status.st_mtime_ns, status.st_ino

@@ -1,0 +1,11 @@
+# Lay windows within segments and mark those to reject.
+rule epoch:
+    input:
+        before=wiring.needed_by("epoch"),
+    output:
+        receipt=receipt("epoch", "{batch}"),
+    log:
+        receipt("epoch", "{batch}.log"),
+    priority: 60
+    run:
+        wiring.carry_out("epoch", wildcards.batch, output.receipt)

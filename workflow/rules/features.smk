@@ -1,0 +1,11 @@
+# Compute the features of each signal.
+rule features:
+    input:
+        before=wiring.needed_by("features"),
+    output:
+        receipt=receipt("features", "{batch}"),
+    log:
+        receipt("features", "{batch}.log"),
+    priority: 80
+    run:
+        wiring.carry_out("features", wildcards.batch, output.receipt)

@@ -1,0 +1,11 @@
+# Apply the filter stages in order.
+rule filter:
+    input:
+        before=wiring.needed_by("filter"),
+    output:
+        receipt=receipt("filter", "{batch}"),
+    log:
+        receipt("filter", "{batch}.log"),
+    priority: 40
+    run:
+        wiring.carry_out("filter", wildcards.batch, output.receipt)

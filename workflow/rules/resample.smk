@@ -1,0 +1,11 @@
+# Bring each signal to the study's rate.
+rule resample:
+    input:
+        before=wiring.needed_by("resample"),
+    output:
+        receipt=receipt("resample", "{batch}"),
+    log:
+        receipt("resample", "{batch}.log"),
+    priority: 30
+    run:
+        wiring.carry_out("resample", wildcards.batch, output.receipt)

@@ -1,0 +1,11 @@
+# Estimate power spectral densities.
+rule spectrum:
+    input:
+        before=wiring.needed_by("spectrum"),
+    output:
+        receipt=receipt("spectrum", "{batch}"),
+    log:
+        receipt("spectrum", "{batch}.log"),
+    priority: 70
+    run:
+        wiring.carry_out("spectrum", wildcards.batch, output.receipt)

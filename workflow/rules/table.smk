@@ -1,0 +1,10 @@
+# Gather each signal's features from all recordings.
+rule table:
+    input:
+        before=receipt("verdict", wiring.plan_id),
+    output:
+        receipt=receipt("table", wiring.plan_id),
+    log:
+        receipt("table", f"{wiring.plan_id}.log"),
+    run:
+        wiring.carry_out_study("table", output.receipt)
