@@ -178,7 +178,8 @@ def check_design(index: int, question: Question, design: Design) -> Iterator[Fau
     path: Path = ("questions", index)
     side = "within" if question.between is None else "between"
     column = question.within if question.between is None else question.between
-    if column is None or not design.cells:
+    undecided = (question.within is None) == (question.between is None)
+    if column is None or undecided or not design.cells:
         return
     if column == SEGMENT and side == "within":
         yield from _check_pairs(path, question, column, _segments_by_participant(design))

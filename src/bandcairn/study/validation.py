@@ -56,7 +56,7 @@ class Understood:
     declared_signals : tuple of str
         Names of all signals, understood or not.
     pruned : frozenset of str
-        Names of the signals that lost keys.
+        Names of the signals that may have lost a band or segment that a question names.
     questions : dict of int to Question
         By position in the file.
     faults : tuple of Fault
@@ -102,7 +102,7 @@ def _salvaged(content: dict[str, Any], faults: list[Fault]) -> Understood:
         kind = _KINDS.get(raw.get("kind")) if isinstance(raw, dict) and _is_text(raw.get("kind")) else None
         signal, found = _salvage(kind, raw, ("signals", name)) if kind else (None, [])
         faults += found
-        if found or signal is None:
+        if signal is None or any(_concerns_questions(fault.path) for fault in found):
             pruned.add(name)
         if signal is not None:
             signals[name] = signal
@@ -113,6 +113,11 @@ def _salvaged(content: dict[str, Any], faults: list[Fault]) -> Understood:
         if question is not None:
             questions[index] = question
     return Understood(None, signals, tuple(raw_signals), frozenset(pruned), questions, _told_once(faults))
+
+
+def _concerns_questions(path: Path) -> bool:
+    """Tell whether a key taken out at `path` may have held what a question names: a band or a segment."""
+    return len(path) <= 3 or path[2] in ("features", "segments")
 
 
 def _is_text(value: object) -> bool:
@@ -264,7 +269,8 @@ def _walk(path: Path, content: dict[str, Any]) -> tuple[type[BaseModel] | None, 
     field: FieldInfo | None = None
     for position, step in enumerate(path):
         if path[0] == "signals" and position == 1:
-            model = _KINDS.get(_kind(content, step))
+            # Of an unknown kind only the key kind itself is told, and it reads alike in all of them.
+            model = _KINDS.get(_kind(content, step), EegSignal)
         elif isinstance(step, str) and model is not None:
             field = model.model_fields.get(step, field)
             model = _model_within(field.annotation) if field and step in model.model_fields else None
