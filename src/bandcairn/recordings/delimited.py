@@ -139,7 +139,7 @@ def _names(path: Path, line: bytes, separator: str) -> tuple[str, ...]:
         raise refusal(path, "a header line that is not UTF-8", "UTF-8", remedy) from None
     if "\r" in header or "\0" in header:
         raise refusal(path, "no line feeds or a wide encoding", "UTF-8 text with lines", "Save it as UTF-8.")
-    names = tuple(name.strip() for name in next(csv.reader([header], delimiter=separator), []))
+    names = tuple(name.strip() for name in _split(path, header, separator)[0])
     other = next((mark for mark in (";", "\t", ",") if mark != separator and mark in header), None)
     if len(names) == 1 and other:
         kind = "tab" if separator == "\t" else "comma"
@@ -267,14 +267,24 @@ def _rows(text: Text) -> list[list[str]]:
         row = text.body[: error.start].count(b"\n")
         found = f"bytes that are not UTF-8 in {_row_name(row)}"
         raise refusal(text.path, found, "UTF-8", "Save the file as UTF-8.") from None
-    rows = [row or [""] for row in csv.reader(io.StringIO(body, newline=""), delimiter=text.separator)]
+    rows = [row or [""] for row in _split(text.path, body, text.separator)]
     for number, cells in enumerate(rows):
         if len(cells) != len(text.names):
             too_many = len(cells) > len(text.names)
             hint = "If its numbers have decimal commas, write decimal points." if too_many else _RESTORE
             found = f"{len(cells)} cells in {_row_name(number)}"
             raise refusal(text.path, found, f"{len(text.names)}, as in the header line", hint)
+    if len(rows) != text.n_rows:
+        found = f"{text.n_rows} lines that make {len(rows)} rows"
+        raise refusal(text.path, found, "one line a row", "Export without line breaks inside of cells.")
     return rows
+
+
+def _split(path: Path, lines: str, separator: str) -> list[list[str]]:
+    try:
+        return list(csv.reader(io.StringIO(lines, newline=""), delimiter=separator))
+    except csv.Error as error:
+        raise refusal(path, f"a row that cannot be split ({error})", "delimited text", _RESTORE) from error
 
 
 def _numbers_or_texts(cells: tuple[str, ...]) -> NDArray[np.float64] | tuple[str, ...]:
