@@ -5,7 +5,7 @@ rule beats:
     output:
         receipt=receipt("beats", "{batch}"),
     log:
-        receipt("beats", "{batch}.log"),
+        text=log_of("beats", "{batch}"),
     priority: 50
     run:
-        wiring.carry_out("beats", wildcards.batch, output.receipt)
+        wiring.carry_out("beats", wildcards.batch, output.receipt, log.text)

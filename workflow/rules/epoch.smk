@@ -5,7 +5,7 @@ rule epoch:
     output:
         receipt=receipt("epoch", "{batch}"),
     log:
-        receipt("epoch", "{batch}.log"),
+        text=log_of("epoch", "{batch}"),
     priority: 60
     run:
-        wiring.carry_out("epoch", wildcards.batch, output.receipt)
+        wiring.carry_out("epoch", wildcards.batch, output.receipt, log.text)

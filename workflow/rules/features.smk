@@ -5,7 +5,7 @@ rule features:
     output:
         receipt=receipt("features", "{batch}"),
     log:
-        receipt("features", "{batch}.log"),
+        text=log_of("features", "{batch}"),
     priority: 80
     run:
-        wiring.carry_out("features", wildcards.batch, output.receipt)
+        wiring.carry_out("features", wildcards.batch, output.receipt, log.text)

@@ -5,7 +5,7 @@ rule filter:
     output:
         receipt=receipt("filter", "{batch}"),
     log:
-        receipt("filter", "{batch}.log"),
+        text=log_of("filter", "{batch}"),
     priority: 40
     run:
-        wiring.carry_out("filter", wildcards.batch, output.receipt)
+        wiring.carry_out("filter", wildcards.batch, output.receipt, log.text)

@@ -5,7 +5,7 @@ rule load:
     output:
         receipt=receipt("load", "{batch}"),
     log:
-        receipt("load", "{batch}.log"),
+        text=log_of("load", "{batch}"),
     priority: 10
     run:
-        wiring.carry_out("load", wildcards.batch, output.receipt)
+        wiring.carry_out("load", wildcards.batch, output.receipt, log.text)

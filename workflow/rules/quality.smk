@@ -5,7 +5,7 @@ rule quality:
     output:
         receipt=receipt("quality", "{batch}"),
     log:
-        receipt("quality", "{batch}.log"),
+        text=log_of("quality", "{batch}"),
     priority: 20
     run:
-        wiring.carry_out("quality", wildcards.batch, output.receipt)
+        wiring.carry_out("quality", wildcards.batch, output.receipt, log.text)

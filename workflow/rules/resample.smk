@@ -5,7 +5,7 @@ rule resample:
     output:
         receipt=receipt("resample", "{batch}"),
     log:
-        receipt("resample", "{batch}.log"),
+        text=log_of("resample", "{batch}"),
     priority: 30
     run:
-        wiring.carry_out("resample", wildcards.batch, output.receipt)
+        wiring.carry_out("resample", wildcards.batch, output.receipt, log.text)

@@ -5,6 +5,6 @@ rule results:
     output:
         receipt=receipt("results", wiring.plan_id),
     log:
-        receipt("results", f"{wiring.plan_id}.log"),
+        text=log_of("results", wiring.plan_id),
     run:
-        wiring.publish(output.receipt)
+        wiring.publish(output.receipt, log.text)

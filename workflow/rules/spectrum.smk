@@ -5,7 +5,7 @@ rule spectrum:
     output:
         receipt=receipt("spectrum", "{batch}"),
     log:
-        receipt("spectrum", "{batch}.log"),
+        text=log_of("spectrum", "{batch}"),
     priority: 70
     run:
-        wiring.carry_out("spectrum", wildcards.batch, output.receipt)
+        wiring.carry_out("spectrum", wildcards.batch, output.receipt, log.text)

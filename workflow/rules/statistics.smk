@@ -5,6 +5,6 @@ rule statistics:
     output:
         receipt=receipt("statistics", wiring.plan_id),
     log:
-        receipt("statistics", f"{wiring.plan_id}.log"),
+        text=log_of("statistics", wiring.plan_id),
     run:
-        wiring.carry_out_study("statistics", output.receipt)
+        wiring.carry_out_study("statistics", output.receipt, log.text)

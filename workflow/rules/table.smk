@@ -5,6 +5,6 @@ rule table:
     output:
         receipt=receipt("table", wiring.plan_id),
     log:
-        receipt("table", f"{wiring.plan_id}.log"),
+        text=log_of("table", wiring.plan_id),
     run:
-        wiring.carry_out_study("table", output.receipt)
+        wiring.carry_out_study("table", output.receipt, log.text)

@@ -5,6 +5,6 @@ rule verdict:
     output:
         receipt=receipt("verdict", wiring.plan_id),
     log:
-        receipt("verdict", f"{wiring.plan_id}.log"),
+        text=log_of("verdict", wiring.plan_id),
     run:
-        wiring.carry_out_study("verdict", output.receipt)
+        wiring.carry_out_study("verdict", output.receipt, log.text)

@@ -41,7 +41,6 @@ def exit_code_of(arguments: list[str]) -> int:
     arguments : list of str
         What stands after the name of the program.
     """
-    as_json = "--json" in arguments
     try:
         code = app(arguments, standalone_mode=False)
     except click.exceptions.Abort:
@@ -49,25 +48,27 @@ def exit_code_of(arguments: list[str]) -> int:
     except click.ClickException as error:
         error.show()
         return STUDY_AT_FAULT
-    except KeyboardInterrupt:
-        print_error("interrupted; what was computed is kept: run again to go on", as_json=as_json)
-        return INTERRUPTED
-    except (EngineError, DamagedNodeError) as error:
-        print_error(error, as_json=as_json)
-        return FAULT
-    except BandcairnError as error:
-        print_error(error, as_json=as_json)
-        return STUDY_AT_FAULT
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return DONE
-    except Exception as error:  # noqa: BLE001 - a user meets a sentence, whatever went wrong
-        print_error(fault_sentence(error), as_json=as_json)
-        return FAULT
+    except (Exception, KeyboardInterrupt) as error:  # noqa: BLE001 - a user meets a sentence, whatever went wrong
+        code, told = _verdict(error)
+        print_error(told, as_json="--json" in arguments)
     return code if isinstance(code, int) else DONE
 
 
-def fault_sentence(error: Exception) -> str:
+def _verdict(error: BaseException) -> tuple[int, Exception | str]:
+    """Return the exit code of an error, and what to say of it."""
+    if isinstance(error, KeyboardInterrupt):
+        return INTERRUPTED, "interrupted; what was computed is kept: run again to go on"
+    if isinstance(error, (EngineError, DamagedNodeError)):
+        return FAULT, error
+    if isinstance(error, BandcairnError):
+        return STUDY_AT_FAULT, error
+    return FAULT, fault_sentence(error)
+
+
+def fault_sentence(error: BaseException) -> str:
     """Return what to say of a fault of bandcairn itself, with the place of the code."""
     import traceback
 

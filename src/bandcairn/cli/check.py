@@ -1,4 +1,4 @@
-"""``bandcairn check``: is the study sound, and what does it say in full?"""
+"""``bandcairn check``: tell whether the study is sound, and print it in full."""
 
 from __future__ import annotations
 

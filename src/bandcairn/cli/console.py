@@ -75,7 +75,7 @@ def opened(folder: Path, *, quiet: bool = False) -> Project:
     from bandcairn.execution.project import open_project
 
     with counted_progress("reading raw files", "files", quiet=quiet) as advance:
-        return open_project(folder, lambda done, total: advance(done, total))
+        return open_project(folder, advance)
 
 
 @contextmanager

@@ -1,4 +1,4 @@
-"""``bandcairn plan``: what would run, and why?"""
+"""``bandcairn plan``: tell what would run, and why."""
 
 from __future__ import annotations
 
@@ -92,7 +92,7 @@ def _lines(found: Sequence[Reason], *, each: bool) -> list[str]:
         (reason.node.step, reason.node.signal or "(study)", "; ".join(reason.why)) for reason in found
     )
     lines = [
-        f"{step:<10}  {signal:<12}  {count:>5} ×  {why}" for (step, signal, why), count in groups.items()
+        f"{step:<10}  {signal:<12}  {count:>5} x  {why}" for (step, signal, why), count in groups.items()
     ]
     return [*lines, "(--each names every node)"]
 

@@ -45,7 +45,7 @@ def frame_to_signal(frame: Frame) -> Signal:
             row[:] = column
         else:
             np.multiply(column, gain, out=row)
-            row += offset
+            np.add(row, offset, out=row)
     runs = tuple(Run(first, stop, Fraction(start)) for first, stop, start in frame.facts["runs"])
     return Signal(samples, Fraction(frame.facts["rate_hz"]), channels, runs)
 

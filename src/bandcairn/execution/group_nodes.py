@@ -8,13 +8,13 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from bandcairn.execution.signal_nodes import QUALITY_UNITS
-from bandcairn.statistics import Comparison, adjust, compare
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator, Mapping, Sequence
+    from collections.abc import Callable, Iterator, Mapping, Sequence
 
     from bandcairn.statistics import Result
+    from bandcairn.store.frame import Column
 
 VERDICT_COLUMNS = {
     "recording": "text",
@@ -140,6 +140,8 @@ def _judged(row: Mapping[str, Any], told: str | None, *, exclude: bool) -> dict[
 
 def statistics_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
     """Answer the questions of one family and adjust their p values together."""
+    from bandcairn.statistics import adjust
+
     rows = [
         row
         for question in parameters["questions"]
@@ -177,6 +179,8 @@ def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> 
 
 
 def _compared(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]], n_channels: int) -> Result:
+    from bandcairn.statistics import Comparison, compare
+
     factor = question["within"] or question["between"]
     observations = list(_observations(rows, n_channels, factor))
     first, second = question["contrast"]
@@ -232,8 +236,7 @@ def _plain(column: Any) -> Sequence[Any]:  # noqa: ANN401 - a column of either k
 
 
 def _frame(rows: Sequence[Mapping[str, Any]], schema: Mapping[str, str]) -> Frame:
-    make = {"text": tuple, "number": _numbers, "count": _counts}
-    return Frame({name: make[kind]([row[name] for row in rows]) for name, kind in schema.items()})
+    return Frame({name: _COLUMNS[kind]([row[name] for row in rows]) for name, kind in schema.items()})
 
 
 def _numbers(values: Sequence[float | None]) -> np.ndarray[Any, Any]:
@@ -242,3 +245,6 @@ def _numbers(values: Sequence[float | None]) -> np.ndarray[Any, Any]:
 
 def _counts(values: Sequence[int]) -> np.ndarray[Any, Any]:
     return np.array(values, dtype=np.int64)
+
+
+_COLUMNS: dict[str, Callable[[Sequence[Any]], Column]] = {"text": tuple, "number": _numbers, "count": _counts}

@@ -206,14 +206,14 @@ def _exclusions(
     for failure in failures:
         what = "recording" if not failure.signal else "signal"
         yield _left_out(
-            failure.recording, failure.signal, "", "", what, 1, 1, f"{failure.step}: {failure.reason}"
+            (failure.recording, failure.signal), what, (1, 1), f"{failure.step}: {failure.reason}"
         )
     for row in verdicts:
         if row["passed"] == "no":
             signal = project.study.description.signals[row["signal"]]
             what = "channel" if signal.quality.on_failure == "exclude" else "channel, kept"
             reason = f"{row['measure']} {row['value']:.3g} is above {row['limit']:g}"
-            yield _left_out(row["recording"], row["signal"], row["channel"], "", what, 1, 1, reason)
+            yield _left_out((row["recording"], row["signal"], row["channel"]), what, (1, 1), reason)
     seen = set()
     for row in features:
         place = (row["recording"], row["signal"], row["channel"], row["segment"] or "")
@@ -234,22 +234,14 @@ def _rejected_epochs(
     )
     for count, reason in rules:
         if count:
-            yield _left_out(*place, "epoch", count, row["epochs_total"], reason)
+            yield _left_out(place, "epoch", (count, row["epochs_total"]), reason)
 
 
-def _left_out(
-    recording: str, signal: str, channel: str, segment: str, what: str, count: int, total: int, reason: str
-) -> dict[str, Any]:
-    return {
-        "recording": recording,
-        "signal": signal or None,
-        "channel": channel or None,
-        "segment": segment or None,
-        "what": what,
-        "count": count,
-        "total": total,
-        "reason": reason,
-    }
+def _left_out(place: tuple[str, ...], what: str, counted: tuple[int, int], reason: str) -> dict[str, Any]:
+    """Return one row: `place` is recording, signal, channel, segment, as far as it goes; `counted` is of how many."""
+    columns = ("recording", "signal", "channel", "segment")
+    where = dict(zip(columns, (name or None for name in place), strict=False))
+    return {**where, "what": what, "count": counted[0], "total": counted[1], "reason": reason}
 
 
 def _ledger(

@@ -25,13 +25,14 @@ from bandcairn.steps.spectrum import power_density
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterator, Mapping
+    from collections.abc import Iterator, Mapping
 
     from numpy.typing import NDArray
 
     from bandcairn.signal import Signal
     from bandcairn.steps.epoch import Epochs
     from bandcairn.steps.features import FeatureValue
+    from bandcairn.store.frame import Column
 
 
 def beats_node(_: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
@@ -42,7 +43,7 @@ def beats_node(_: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
         for run, samples in signal.each_run()
         for index, channel in enumerate(signal.channels)
     ]
-    columns = {
+    columns: dict[str, Column] = {
         "channel": tuple(channel for channel, _, beats in found for _ in beats.times_s),
         "time_s": np.concatenate([start_s + beats.times_s for _, start_s, beats in found]),
         "amplitude_uv": np.concatenate([beats.amplitude_uv for _, _, beats in found]),
@@ -68,14 +69,9 @@ def spectrum_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -
     options = {name: value for name, value in parameters.items() if name not in ("kind", "interpolation_hz")}
     if options["method"] == "periodogram":
         del options["segment_s"], options["overlap"]
-    estimate: Callable[..., Frame] = {
-        "eeg": _eeg_spectra,
-        "emg": _emg_spectra,
-        "ecg": _beat_spectra,
-    }[parameters["kind"]]
     if parameters["kind"] == "ecg":
-        return estimate(parents, options, parameters["interpolation_hz"])
-    return estimate(parents, options)
+        return _beat_spectra(parents, options, parameters["interpolation_hz"])
+    return _eeg_spectra(parents, options) if parameters["kind"] == "eeg" else _emg_spectra(parents, options)
 
 
 def _eeg_spectra(parents: Mapping[str, Frame], options: Mapping[str, Any]) -> Frame:

@@ -84,17 +84,16 @@ class Wiring:
             if any(node.key in missing for nodes in batch.steps.values() for node in nodes)
         ]
 
-    def carry_out(self, step: str, batch: str, receipt_path: str) -> None:
+    def carry_out(self, step: str, batch: str, receipt_path: str, log_path: str) -> None:
         """Do the work of one job: take a batch through a step."""
-        work = self.worker.work(self.batches[batch].steps[step])
-        _write_receipt(receipt_path, work)
+        _finish(self.worker.work(self.batches[batch].steps[step]), receipt_path, log_path)
 
-    def carry_out_study(self, step: str, receipt_path: str) -> None:
+    def carry_out_study(self, step: str, receipt_path: str, log_path: str) -> None:
         """Do the work of one job of the study: tables or statistics over what has been computed."""
-        work = self.worker.work(node for node in self._study_nodes() if node.step == step)
-        _write_receipt(receipt_path, work)
+        nodes = [node for node in self._study_nodes() if node.step == step]
+        _finish(self.worker.work(nodes), receipt_path, log_path)
 
-    def publish(self, receipt_path: str) -> None:
+    def publish(self, receipt_path: str, log_path: str) -> None:
         """Write the results.
 
         Raises
@@ -111,7 +110,7 @@ class Wiring:
         outcome = publish(self.project, self._study_nodes(), self.worker.store, records, failures)
         if outcome.failures:
             raise EngineError(f"results written, but {outcome.failed_sentence}; see results/exclusions.csv")
-        _write_receipt(receipt_path, Work([], []))
+        _finish(Work([], []), receipt_path, log_path)
 
     @property
     def _names(self) -> set[str]:
@@ -132,11 +131,18 @@ def receipt(step: str, name: str) -> str:
     return f"{RECEIPTS}/{step}/{name}.json"
 
 
+def log_of(step: str, name: str) -> str:
+    """Return the path of a job's log, relative to the study."""
+    return f"{RECEIPTS}/{step}/{name}.log"
+
+
 def clear_receipts(study_folder: Path) -> None:
-    """Remove the receipts of earlier runs."""
+    """Remove the receipts and logs of earlier runs."""
     shutil.rmtree(study_folder / RECEIPTS, ignore_errors=True)
 
 
-def _write_receipt(path: str, work: Work) -> None:
-    make_private_folder(Path(path).parent)
-    Path(path).write_text(work.to_json(), "utf-8")
+def _finish(work: Work, receipt_path: str, log_path: str) -> None:
+    """Write the log of a job, then its receipt: with it the job is done."""
+    for path, text in ((log_path, work.log()), (receipt_path, work.to_json())):
+        make_private_folder(Path(path).parent)
+        Path(path).write_text(text, "utf-8")

@@ -141,6 +141,14 @@ class Work:
         """Return the work as the text of a receipt."""
         return json.dumps({"records": self.records, "failures": [asdict(f) for f in self.failures]})
 
+    def log(self) -> str:
+        """Return the work as lines for a person: nodes with their seconds, failures with their reasons."""
+        made = [
+            f"{record['step']} {record['recording']} {record['seconds']:.3f} s" for record in self.records
+        ]
+        failed = [f"FAILED {f.step} {f.recording} {f.signal}: {f.reason}\n{f.fault}" for f in self.failures]
+        return "".join(f"{line}\n" for line in (*made, *failed))
+
     @classmethod
     def from_json(cls, text: str) -> Work:
         """Return the work that a receipt tells of."""

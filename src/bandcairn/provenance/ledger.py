@@ -12,6 +12,7 @@ from bandcairn.store.layout import STORE_NAME, node_path
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Mapping
+
     from bandcairn.nodes.node import Node
 
 LEDGER_SCHEMA = {
