@@ -106,4 +106,4 @@ def _frames(
     """Return one windowed stretch of noise a row, shape (n_frames, width)."""
     width = 2 * (frame_density.shape[1] - 1)
     window = np.sin(np.pi * (np.arange(width) + 0.5) / width)
-    return window * gaussian_noise(rng, frame_density, width, rate_hz)
+    return np.asarray(window * gaussian_noise(rng, frame_density, width, rate_hz))
