@@ -240,7 +240,8 @@ def _cascades(stages: tuple[FilterStage, ...], rate_hz: float) -> tuple[_Cascade
 def _cascade(sos: NDArray[np.float64], phase: Phase) -> _Cascade:
     from scipy.signal import sosfilt_zi
 
-    settling = math.ceil(math.log(0.01) / math.log(_slowest_radius(sos)))
+    # A pole may lie at 0 itself (order 1 at a quarter of the rate): it has settled after one sample.
+    settling = math.ceil(math.log(0.01) / math.log(max(_slowest_radius(sos), 1e-9)))
     return _Cascade(sos, np.asarray(sosfilt_zi(sos), np.float64), phase, settling)
 
 

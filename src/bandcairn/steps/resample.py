@@ -285,17 +285,17 @@ def _stretch(samples: NDArray[np.float64], start: int, stop: int) -> NDArray[np.
     n = len(samples)
     if start >= 0 and stop <= n:
         return samples[start:stop]
-    before = _beyond(samples, np.arange(start, min(0, stop)))
-    after = _beyond(samples, np.arange(max(n, start), stop))
+    before = _beyond(samples[::-1], max(0, -start))[::-1]
+    after = _beyond(samples, stop - max(n, start))
     return np.concatenate([before, samples[max(0, start) : stop], after])
 
 
-def _beyond(samples: NDArray[np.float64], index: NDArray[np.int64]) -> NDArray[np.float64]:
-    """Return the odd extension of a run at indices outside it, turned about its ends as often as needed."""
+def _beyond(samples: NDArray[np.float64], count: int) -> NDArray[np.float64]:
+    """Return `count` samples after the last one, by odd extension, turned at both ends as often as needed."""
     n = len(samples)
     if n == 1:
-        return np.full(len(index), samples[0])
-    turn, place = np.divmod(index, 2 * (n - 1))
+        return np.full(max(0, count), samples[0])
+    turn, place = np.divmod(np.arange(n, n + count), 2 * (n - 1))
     mirrored = 2 * samples[-1] - samples[np.minimum(2 * (n - 1) - place, n - 1)]
     once = np.where(place < n, samples[np.minimum(place, n - 1)], mirrored)
     return np.asarray(once + turn * (2 * (samples[-1] - samples[0])))
