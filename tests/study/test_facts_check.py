@@ -82,17 +82,11 @@ CASES = {
     "no unit": (facts(channel("EMG", unit=None)), (), "signals.biceps.load.unit", "no unit for EMG"),
     "a blank unit": (facts(channel("EMG", unit=" ")), (), "signals.biceps.load.unit", "' ' for EMG"),
     "an unknown unit": (facts(channel("EMG", unit="kg")), (), "signals.biceps.load.unit", "'kg' for EMG"),
-    "a declared rate that the file contradicts": (
-        facts(channel("EMG", Fraction(2000), n_samples=1_200_000)),
+    "a declared rate that the file's clock contradicts": (
+        facts(channel("EMG", Fraction(2000), unit=None, n_samples=1_200_000)),
         (LOAD, ("epoch: {length_s: 1}", "epoch: {length_s: 1}\n    resample: {rate_hz: 500}")),
         "signals.biceps.load.rate_hz",
         "1000 Hz declared, but the file states 2000 Hz",
-    ),
-    "a declared unit that the file contradicts": (
-        facts(channel("EMG", unit="mV")),
-        (LOAD,),
-        "signals.biceps.load.unit",
-        "uV declared, but the file states mV for EMG",
     ),
     "a cut-off beyond half the file's rate": (
         facts(),
@@ -118,6 +112,14 @@ CASES = {
         "300 s",
     ),
 }
+
+
+def test_what_is_declared_for_delimited_files_leaves_an_edf_file_alone(study_folder: Path) -> None:
+    """A study may mix both: a file that states its rate and unit is read by its own word."""
+    stated = facts(channel("EMG", Fraction(2000), unit="mV", n_samples=1_200_000))
+    resampled = ("epoch: {length_s: 1}", "epoch: {length_s: 1}\n    resample: {rate_hz: 500}")
+
+    assert check(study_folder, stated, replaced=(LOAD, resampled)) == ()
 
 
 @pytest.mark.parametrize(("first", "replaced", "field", "found"), CASES.values(), ids=CASES)

@@ -134,12 +134,14 @@ def _check_rates(case: _Case) -> Iterator[Problem]:
 
 
 def _check_declared_rate(case: _Case, channels: tuple[ChannelFacts, ...]) -> Iterator[Problem]:
+    """Refuse a declared rate that a delimited file's clock contradicts; other formats need no declaration."""
     declared = case.load.rate_hz
-    own = {float(channel.rate_hz) for channel in channels if channel.rate_hz is not None}
+    delimited = [channel for channel in channels if channel.unit is None]
+    own = {float(channel.rate_hz) for channel in delimited if channel.rate_hz is not None}
     other = [rate for rate in sorted(own) if declared and not math.isclose(rate, declared, rel_tol=_SAME)]
     if declared is not None and other:
         found = f"{declared:g} Hz declared, but the file states {listed(f'{rate:g} Hz' for rate in other)}"
-        remedy = "Delete load.rate_hz, or declare it only for a signal of delimited files without time_s."
+        remedy = "Delete load.rate_hz: the file's time_s column tells its rate."
         yield case.refuse("load", "rate_hz", found=found, allowed="the rate of the file", remedy=remedy)
 
 
@@ -161,8 +163,7 @@ def _check_units(case: _Case) -> Iterator[Problem]:
     declared = case.load.unit
     for channel in case.channels():
         unit = declared if channel.unit is None else channel.unit
-        scale = _microvolts(unit)
-        if scale is None:
+        if _microvolts(unit) is None:
             found = f"{unit!r} for {channel.label}" if unit else f"no unit for {channel.label}"
             remedy = (
                 "Declare load: {unit: ...}."
@@ -172,10 +173,6 @@ def _check_units(case: _Case) -> Iterator[Problem]:
             yield case.refuse(
                 "load", "unit", found=found, allowed=f"one of {listed(KNOWN_UNITS)}", remedy=remedy
             )
-        elif declared is not None and scale != _microvolts(declared):
-            found = f"{declared} declared, but the file states {unit} for {channel.label}"
-            remedy = "Delete load.unit, or declare it only for a signal of delimited files."
-            yield case.refuse("load", "unit", found=found, allowed="the unit of the file", remedy=remedy)
 
 
 def _microvolts(unit: str | None) -> float | None:
