@@ -277,8 +277,10 @@ def _peaks(samples: NDArray[np.float64], index: NDArray[np.int64], rate_hz: floa
     highest = np.take_along_axis(around, np.argmax(windows, axis=1)[:, np.newaxis], axis=1)[:, 0]
     lowest = np.take_along_axis(around, np.argmin(windows, axis=1)[:, np.newaxis], axis=1)[:, 0]
     usual, opposite = (lowest, highest) if inverted else (highest, lowest)
-    # A beat that only rises or falls towards the usual side is placed at its opposite extreme.
-    peak = np.where(_turns_at(samples, usual), usual, opposite)
+    # A beat that only rises or falls towards the usual side is placed at its opposite extreme, unless the
+    # run ends there: then its peak was not recorded.
+    cut_off = (usual == 0) | (usual == samples.size - 1)
+    peak = np.where(_turns_at(samples, usual) | cut_off, usual, opposite)
     return _refined(samples, peak[_turns_at(samples, peak)], rate_hz, inverted=inverted)
 
 
