@@ -53,9 +53,11 @@ def _records(text: FileText, channels: list[Channel]) -> list[bytes]:
             )
             for one in channels
         ]
-        for lists in (text.lists, text.second_lists):
-            if lists:
-                parts.append(lists[record].ljust(_list_bytes(text, lists), b"\0"))
+        parts += [
+            lists[record].ljust(_list_bytes(text, lists), b"\0")
+            for lists in (text.lists, text.second_lists)
+            if lists
+        ]
         records.append(b"".join(parts))
     return records
 
@@ -112,7 +114,7 @@ def build_bytes(text: FileText, channels: list[Channel]) -> bytes:
 
 @pytest.fixture
 def channel() -> type[Channel]:
-    """The description of one channel."""
+    """Hand out the description of one channel."""
     return Channel
 
 

@@ -18,7 +18,7 @@ FREQUENCIES_HZ = np.arange(0, 501.0)
 
 def lines(frequency_hz: np.ndarray) -> np.ndarray:
     """Return a density per epoch that holds one line, shape (1, n_epochs, n_freq)."""
-    return (frequency_hz[:, np.newaxis] == FREQUENCIES_HZ).astype(float)[np.newaxis]
+    return np.where(frequency_hz[:, np.newaxis] == FREQUENCIES_HZ, 1.0, 0.0)[np.newaxis]
 
 
 def epochs(
@@ -27,7 +27,7 @@ def epochs(
     """Return touching epochs of 2 s of one channel, each a line at its frequency."""
     n = frequency_hz.size
     return EmgEpochs(
-        start_s=2.0 * np.arange(n),
+        start_s=np.arange(0, 2.0 * n, 2),
         length_s=2.0,
         kept=np.ones((1, n), dtype=bool) if kept is None else kept[np.newaxis],
         rms_uv=np.full((1, n), 3.0) if rms_uv is None else rms_uv[np.newaxis],

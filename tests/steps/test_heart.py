@@ -14,7 +14,7 @@ FREQUENCIES_HZ = np.arange(0, 2.0001, 1 / 120)
 
 def beats(n: int = 100) -> np.ndarray:
     """Return beats 790 and 810 ms apart in turn, the first at 1 s."""
-    return 1 + np.r_[0, np.cumsum(np.tile([0.79, 0.81], n))]
+    return np.cumsum(np.append(1.0, np.tile([0.79, 0.81], n)))
 
 
 def time_features(beat_times_s: np.ndarray, start_s: list[float], length_s: float) -> dict[str, FeatureValue]:

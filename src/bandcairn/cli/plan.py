@@ -45,7 +45,7 @@ def plan(
         )
         return
     if not missing:
-        say(f"nothing to do: all {len(project.plan.nodes)} nodes stand{_results_clause(project)}")
+        say(f"nothing to compute: all {len(project.plan.nodes)} nodes stand{_results_clause(project)}")
         return
     for line in _lines(found, each=each or len(found) <= _MOST_LINES):
         say(line)

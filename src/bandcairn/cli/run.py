@@ -76,6 +76,7 @@ def summary(project: Project, report: RunReport, code: int) -> dict[str, object]
         "exit_code": code,
         "computed": report.computed,
         "nodes": len(project.plan.nodes),
+        "results_written": report.rewritten,
         "failures": [
             {"recording": f.recording, "signal": f.signal, "step": f.step, "reason": f.reason}
             for f in report.outcome.failures
@@ -90,7 +91,8 @@ def tell(project: Project, report: RunReport, seconds: float) -> None:
     if report.computed:
         say(f"computed {report.computed} of {nodes} nodes in {duration(seconds)}")
     else:
-        say(f"nothing to do: all {nodes} nodes stand")
+        results = "; results written anew" if report.rewritten else ""
+        say(f"nothing to compute: all {nodes} nodes stand{results}")
     failures = report.outcome.failures
     for failure in failures:
         place = " ".join(filter(None, (failure.recording, failure.signal)))

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 
 from bandcairn.errors import EngineError
 from bandcairn.execution.progress import PIPE_VARIABLE
-from bandcairn.execution.publish import Outcome, published, read_run
+from bandcairn.execution.publish import Outcome, publish, published, read_run
 from bandcairn.execution.wiring import clear_receipts
 from bandcairn.store.layout import STORE_NAME, make_private_folder
 
@@ -36,12 +36,15 @@ class RunReport:
     Attributes
     ----------
     computed : int
-        Number of nodes that were computed; 0 if everything stood.
+        Number of nodes that were computed; 0 if all of them stood.
+    rewritten : bool
+        Whether the results were written.
     outcome : Outcome
         The failures.
     """
 
     computed: int
+    rewritten: bool
     outcome: Outcome
 
 
@@ -68,8 +71,8 @@ def run_project(
     EngineError
         If the engine ends without having written the results.
     """
-    if not project.missing() and published(project):
-        return RunReport(0, Outcome(()))
+    if not project.missing() and not project.survey.unreadable:
+        return RunReport(0, *_refresh_results(project))
     clear_receipts(project.folder)
     before = read_run(project.results_folder).get("finished"), _run_stamp(project)
     code, computed = _run_engine(project.folder, cores, on_node)
@@ -79,7 +82,17 @@ def run_project(
         if code in (130, -2):
             raise KeyboardInterrupt
         raise EngineError(f"the workflow engine ended with code {code}; its log is {LOG_NAME}")
-    return RunReport(computed, Outcome.of_run(run))
+    return RunReport(computed, True, Outcome.of_run(run))
+
+
+def _refresh_results(project: Project) -> tuple[bool, Outcome]:
+    """Write the results of a study whose nodes all stand, unless they stand too. No engine is needed."""
+    if published(project):
+        return False, Outcome(())
+    from bandcairn.store.store import Store
+
+    nodes = list(project.plan.study_nodes.values())
+    return True, publish(project, nodes, Store(project.store_folder), {}, ())
 
 
 def _run_stamp(project: Project) -> int:

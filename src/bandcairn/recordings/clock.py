@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 from dataclasses import dataclass
 from fractions import Fraction
@@ -42,10 +43,17 @@ class Clock:
 
     @property
     def rate_hz(self) -> Fraction | None:
-        """The simplest fraction among the possible rates."""
+        """The simplest fraction among the possible rates; None where two whole numbers are among them."""
         if self.slowest_hz is None or self.fastest_hz is None:
             return None
+        if math.floor(self.fastest_hz) > math.ceil(self.slowest_hz):
+            return None
         return simplest_between(self.slowest_hz, self.fastest_hz)
+
+    def __str__(self) -> str:
+        if self.slowest_hz is None or self.fastest_hz is None:
+            return "any rate"
+        return f"{float(self.slowest_hz):.9g} to {float(self.fastest_hz):.9g} Hz"
 
     def agrees_with(self, rate_hz: Fraction) -> bool:
         """Return whether `rate_hz` is among the possible rates."""

@@ -7,6 +7,8 @@ copy keeps its digests, and one sample more by one step changes one of them.
 Layout, format 1: the ASCII line ``bandcairn channel 1``, a line feed, a JSON object with sorted keys and
 without blanks, a line feed, and the samples: little-endian two's complement of two bytes (EDF) or three
 (BDF), or little-endian IEEE 754 doubles (delimited text). Exact numbers are fractions written as text.
+Annotations: the line ``bandcairn annotations 1``, a line feed, and a JSON list of [onset in s, duration in s,
+text], sorted.
 """
 
 from __future__ import annotations

@@ -29,6 +29,7 @@ if TYPE_CHECKING:
     from bandcairn.recordings.declared import Declared
 
 _RESTORE = "Restore the original file."
+_MISSING = "Missing samples are not filled in: cut the recording before them."
 _BYTE_ORDER_MARK = b"\xef\xbb\xbf"
 
 
@@ -179,13 +180,16 @@ def _rate_hz(text: Text, declared: Declared) -> Fraction:
     stated_hz = clock.rate_hz if clock else None
     if declared.rate_hz is None:
         if stated_hz is None:
+            found = f"a column {TIME_COLUMN} that allows {clock}" if clock else "no sampling rate"
             remedy = "Declare it in study.yaml, for example `load: {rate_hz: 500}`."
-            raise refusal(text.path, "no sampling rate", f"a column {TIME_COLUMN} or a declaration", remedy)
+            raise refusal(
+                text.path, found, f"a column {TIME_COLUMN} of enough digits or a declaration", remedy
+            )
         return stated_hz
     if clock and not clock.agrees_with(declared.rate_hz):
         found = f"a declared rate of {float(declared.rate_hz):.12g} Hz"
-        allowed = f"{float(clock.rate_hz or 0):.12g} Hz, as {TIME_COLUMN} says"
-        raise refusal(text.path, found, allowed, "Correct the declaration or leave it away.")
+        remedy = "Correct the declaration or leave it away."
+        raise refusal(text.path, found, f"{clock}, as {TIME_COLUMN} says", remedy)
     return declared.rate_hz
 
 
@@ -199,16 +203,8 @@ def _check_numbers(text: Text, label: str, column: NDArray[np.float64] | tuple[s
             return
         row = int(off[0])
         cell = str(column[row])
-    found = (
-        f"{cell!r} in {_row_name(row)}, column {label}"
-        if cell
-        else f"a blank cell in {_row_name(row)}, column {label}"
-    )
-    hint = (
-        "Export with a decimal point."
-        if "," in cell
-        else "Samples that are missing are not filled in: cut them off."
-    )
+    found = f"{repr(cell) if cell else 'a blank cell'} in {_row_name(row)}, column {label}"
+    hint = "Write decimal points, not commas." if "," in cell else _MISSING
     raise refusal(text.path, found, "a finite number", hint)
 
 

@@ -211,12 +211,11 @@ def _taps(up: int, down: int) -> NDArray[np.float64]:
 
 
 def _measured_response(taps: NDArray[np.float64], up: int, down: int) -> tuple[float, float]:
-    """Return pass-band ripple and stop-band attenuation in dB, on a grid 16 times finer than the filter."""
-    n_grid = 16 * 2 ** (len(taps) - 1).bit_length()
-    gain = np.abs(np.fft.rfft(taps, n_grid)) / up
-    share_of_nyquist = np.arange(len(gain)) * (2 * down / n_grid)
-    passed = gain[share_of_nyquist <= _PASS_SHARE]
-    stopped = gain[share_of_nyquist >= _STOP_SHARE]
+    """Return pass-band ripple and stop-band attenuation in dB, on a grid that holds both edges."""
+    per_nyquist = 480  # points up to the new Nyquist frequency: some 18 times finer than the filter resolves
+    gain = np.abs(np.fft.rfft(taps, 2 * down * per_nyquist)) / up
+    passed = gain[: round(_PASS_SHARE * per_nyquist) + 1]
+    stopped = gain[round(_STOP_SHARE * per_nyquist) :]
     return float(np.abs(20 * np.log10(passed)).max()), float(-20 * np.log10(stopped.max()))
 
 
