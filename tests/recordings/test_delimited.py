@@ -99,6 +99,7 @@ def test_cut_follows_the_sample_rule(delimited: Write) -> None:
         ("1,2\n3\n", r"1 cells in row 2 \(line 3\); allowed: 2"),
         ("1,2,3\n4\n", r"3 cells in row 1"),
         ("1,2\n4\n1,2,3\n", r"1 cells in row 2"),
+        ("1,2,3\n4\n5,6\n", r"3 cells in row 1"),
         ("1,2\n\n3,4\n", r"1 cells in row 2 \(line 3\)"),
         ("1,2\n3,x\n", r"'x' in row 2 \(line 3\), column Cz; allowed: a finite number"),
         ("1,2\n3,\n", r"a blank cell in row 2 \(line 3\), column Cz; .*not filled in"),
@@ -138,6 +139,30 @@ def test_file_of_another_layout_is_refused(delimited: Write, content: bytes, nam
     """With the separator or encoding that is allowed."""
     with pytest.raises(RecordingError, match=problem):
         inspect(delimited(content, name))
+
+
+@pytest.mark.parametrize("body", ["1,2,3\n4\n5,6\n", "1,2\n4\n5,6,7\n", '1,"2,3"\n', '"1,2"\n'])
+def test_ragged_row_is_refused_whichever_column_is_read(delimited: Write, body: str) -> None:
+    """Cells that are too many in one row do not make up for those missing in another."""
+    for label in ("Fz", "Cz"):
+        with pytest.raises(RecordingError, match=r"cells in row|'2,3' in row 1"):
+            read(delimited("Fz,Cz\n" + body), (label,), AT_500, None, None)
+
+
+@given(cell=st.text("0123456789.eE+-_ nifaxd()'\t", max_size=8))
+@settings(suppress_health_check=[HealthCheck.function_scoped_fixture], deadline=None, max_examples=500)
+def test_only_finite_numbers_are_read(delimited: Write, cell: str) -> None:
+    """The fast way and Python agree on what a number is, and on its value."""
+    try:
+        number = float(cell) if "_" not in cell else np.nan
+    except ValueError:
+        number = np.nan
+    path = delimited(f"Fz,Cz\n1,{cell}\n")
+    if np.isfinite(number):
+        assert read(path, ("Cz",), AT_500, None, None).samples[0].tolist() == [number]
+    else:
+        with pytest.raises(RecordingError, match="in row 1"):
+            read(path, ("Cz",), AT_500, None, None)
 
 
 def test_text_column_beside_does_not_matter(delimited: Write) -> None:

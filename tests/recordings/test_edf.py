@@ -62,7 +62,7 @@ def test_samples_stay_integers_with_their_scaling_beside(build: Build, channel: 
     """The load node stores integers: 16 bits from EDF, 32 from BDF, both read-only."""
     edf = whole(build([channel("Cz")]), "Cz")
     bdf = whole(build([channel("Cz")], name="one.bdf"), "Cz")
-    assert (edf.samples[0].dtype, bdf.samples[0].dtype) == (np.int16, np.int32)
+    assert [str(raw.samples[0].dtype) for raw in (edf, bdf)] == ["int16", "int32"]
     assert not edf.samples[0].flags.writeable
     assert edf.runs == (Run(0, 200, Fraction(0)),)
     assert edf.gain_uv == pytest.approx((0.1,), rel=1e-15)
@@ -250,6 +250,12 @@ def test_channel_without_a_range_spoils_only_itself(build: Build, channel: Make)
         whole(path, "Dig")
 
 
+def test_range_beyond_any_double_is_refused(build: Build, channel: Make) -> None:
+    """Eight characters can hold 1e999999."""
+    with pytest.raises(RecordingError, match="'1e999999' as the physical maximum of channel Cz"):
+        whole(build([channel("Cz", physical=("0", "1e999999"))]), "Cz")
+
+
 def test_decimal_comma_in_the_header_is_refused_with_the_remedy(build: Build, channel: Make) -> None:
     """Some recorders follow the locale of their computer."""
     path = build([channel("Cz", physical=("-3276,8", "3276,7"))])
@@ -298,7 +304,12 @@ def test_continuous_file_whose_clock_jumps_is_refused(build: Build, channel: Mak
 
 @pytest.mark.parametrize(
     ("record", "problem"),
-    [(b"", "data record 2 without its start time"), (b"+1\x14\x14\0nonsense", "the annotation b'nonsense'")],
+    [
+        (b"", "data record 2 without its start time"),
+        (b"+1\x14\x14\0nonsense", "the annotation b'nonsense'"),
+        (b"+" + b"9" * 5000 + b"\x14\x14", "data record 2 without its start time"),
+        (b"+1\x14\x14\0+" + b"9" * 5000 + b"\x14x\x14", r"the annotation b'\+999"),
+    ],
 )
 def test_damaged_annotation_list_is_refused(build: Build, channel: Make, record: bytes, problem: str) -> None:
     """With the bytes that stand there."""

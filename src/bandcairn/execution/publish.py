@@ -229,7 +229,10 @@ def _rejected_epochs(
     if reject is None:
         return
     rules = (
-        (row["too_large"], f"peak to peak above {reject.peak_to_peak_uv:g} uV" if reject.peak_to_peak_uv else ""),
+        (
+            row["too_large"],
+            f"peak to peak above {reject.peak_to_peak_uv:g} uV" if reject.peak_to_peak_uv else "",
+        ),
         (row["too_flat"], f"peak to peak below {reject.flat_uv:g} uV" if reject.flat_uv else ""),
     )
     for count, reason in rules:

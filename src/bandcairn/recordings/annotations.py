@@ -27,9 +27,10 @@ if TYPE_CHECKING:
 
 # +onset [0x15 duration] 0x14 text 0x14 text 0x14; lists are parted by zero bytes.
 _LIST = re.compile(
-    rb"([+-][0-9]+(?:\.[0-9]*)?)(?:\x15([0-9]+(?:\.[0-9]*)?))?\x14((?:[^\x14]*\x14)*)", re.DOTALL
+    rb"([+-][0-9]{1,15}(?:\.[0-9]{0,24})?)(?:\x15([0-9]{1,15}(?:\.[0-9]{0,24})?))?\x14((?:[^\x14]*\x14)*)",
+    re.DOTALL,
 )
-_START = re.compile(rb"[+-]?[0-9]+(\.[0-9]*)?")
+_START = re.compile(rb"[+-]?[0-9]{1,15}(\.[0-9]{0,24})?")
 
 
 def read_annotations(path: Path, header: Header) -> tuple[Annotation, ...]:
@@ -87,12 +88,11 @@ def _check_continuity(path: Path, header: Header, starts: list[bytes]) -> None:
 
 
 def _seconds(path: Path, starts: list[bytes]) -> NDArray[np.float64]:
-    try:
-        return np.array(starts).astype(np.float64)
-    except ValueError:
-        record = next(record for record, start in enumerate(starts) if not _START.fullmatch(start))
+    record = next((record for record, start in enumerate(starts) if not _START.fullmatch(start)), None)
+    if record is not None:
         found = f"data record {record + 1} without its start time"
-        raise refusal(path, found, "one in every record", "Export the file anew from the recorder.") from None
+        raise refusal(path, found, "one in every record", "Export the file anew from the recorder.")
+    return np.array(starts).astype(np.float64)
 
 
 def _annotations(path: Path, lists: bytes, offset_s: Fraction) -> list[Annotation]:

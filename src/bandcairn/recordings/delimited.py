@@ -124,7 +124,7 @@ def parse(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64] | tu
     RecordingError
         If a row has too many or too few cells.
     """
-    if _cells_fit(text):
+    if _is_plain(text):
         fast = _parse_fast(text, places)
         if fast is not None:
             return fast
@@ -212,9 +212,16 @@ def _row_name(row: int) -> str:
     return f"row {row + 1} (line {row + 2})"
 
 
-def _cells_fit(text: Text) -> bool:
-    """Return whether the separators are as many as full rows have; missing cells then show as blank ones."""
-    return text.body.count(text.separator.encode()) == text.n_rows * (len(text.names) - 1)
+def _is_plain(text: Text) -> bool:
+    """Return whether every line has its cells and no quotes, so that lines can be split without care."""
+    if b'"' in text.body:
+        return False
+    separator = text.separator.encode()
+    return {line.count(separator) for line in _lines(text)} == {len(text.names) - 1}
+
+
+def _lines(text: Text) -> list[bytes]:
+    return text.body.removesuffix(b"\n").split(b"\n")
 
 
 def _parse_fast(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64], ...] | None:
@@ -245,14 +252,10 @@ def _parse_fast(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64
 
 def _cells(text: Text, place: int) -> list[bytes]:
     """Return the cells of one column as written."""
-    if b'"' in text.body or not _cells_fit(text):
+    if not _is_plain(text):
         return [row[place].encode() for row in _rows(text)]
     separator = text.separator.encode()
-    lines = text.body.removesuffix(b"\n").split(b"\n")
-    try:
-        return [line.split(separator, place + 1)[place] for line in lines]
-    except IndexError:
-        return [row[place].encode() for row in _rows(text)]
+    return [line.split(separator, place + 1)[place] for line in _lines(text)]
 
 
 def _rows(text: Text) -> list[list[str]]:

@@ -27,7 +27,8 @@ _SAMPLE_BYTES = {"EDF": 2, "BDF": 3}
 # Width of the fields of the signal headers, which are grouped by field: all labels, then all transducers ...
 _SIGNAL_FIELDS = (16, 80, 8, 8, 8, 8, 8, 80, 8, 32)
 _WHOLE_NUMBER = re.compile(r"[+-]?[0-9]+")
-_DECIMAL_NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?")
+# Two digits of exponent: more would not fit a double once scaled.
+_DECIMAL_NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]{1,2})?")
 
 
 @dataclass(frozen=True, slots=True)

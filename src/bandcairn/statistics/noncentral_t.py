@@ -134,17 +134,17 @@ def noncentrality_interval(t: float, df: float, confidence: float) -> Interval:
 
 def _noncentrality_at(t: float, df: float, probability: float) -> float:
     """Solve P(T <= t) = probability for the noncentrality, for t > 0, by Newton's method inside a bracket."""
-    from scipy.special import chdtri
+    from scipy.special import chdtri, ndtri
 
     low, high = -_REACH, t * math.sqrt(chdtri(df, _TAIL) / df) + _REACH
-    at = t
+    # First guess: T is nearly normal around the noncentrality, with variance 1 + t^2 / (2 df).
+    at = t - float(ndtri(probability)) * math.sqrt(1 + t * t / (2 * df))
     for _ in range(200):
         found = _probability(t, df, at)
         low, high = (at, high) if found.value > probability else (low, at)
-        following = at - (found.value - probability) / found.slope if found.slope < 0 else high
-        if not low < following < high:
-            following = (low + high) / 2
-        if abs(following - at) <= 1e-13 * max(1.0, abs(at)):
+        following = at - (found.value - probability) / found.slope if found.slope < 0 else math.inf
+        # Newton's error shrinks by its square: a step of 1e-9 leaves one far below the last bit.
+        if abs(following - at) <= 1e-9 * max(1.0, abs(at)):
             return following
-        at = following
-    return at
+        at = following if low < following < high else (low + high) / 2
+    raise ArithmeticError(f"no noncentrality found for t {t}, df {df}, probability {probability}")
