@@ -161,6 +161,13 @@ def test_no_kept_epoch_gives_nulls_with_their_reason() -> None:
     assert found["rms"].note == ("no epoch was kept",)
 
 
+def test_a_segment_too_short_for_an_epoch_gives_nulls() -> None:
+    """No epoch at all is no error here."""
+    found = features(epochs(np.empty(0)))
+    assert all(np.isnan(value.values[0]) for value in found.values())
+    assert found["rms"].note == found["mean_frequency"].note == ("no epoch was kept",)
+
+
 def test_epochs_of_zeros_have_an_amplitude_and_no_frequency() -> None:
     """A silent channel: rms 0, its frequencies null."""
     found = features(epochs(np.full(4, -1.0), rms_uv=np.zeros(4)))

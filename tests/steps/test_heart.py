@@ -126,6 +126,25 @@ def test_a_stretch_beyond_the_beats_is_shortened() -> None:
     assert sampled.start_s + (sampled.nn_ms.size - 1) / 4 == 161.0
 
 
+def test_beats_beyond_a_gap_of_the_recording_are_not_used() -> None:
+    """The tachogram ends with the last beat before the gap, and begins with the first interval after it."""
+    recorded = beats(400)
+    both = np.concatenate([recorded[:101], 300 + recorded])
+    assert (tachogram(both, 21, 85, 4).start_s, tachogram(both, 300, 360, 4).start_s) == (21, 302)
+    ended = tachogram(both, 21, 85, 4)
+    assert ended.start_s + (ended.nn_ms.size - 1) / 4 == 81
+    np.testing.assert_array_equal(ended.nn_ms, tachogram(recorded[:101], 21, 85, 4).nn_ms)
+
+
+def test_far_beats_change_nothing() -> None:
+    """Twenty beats beyond either end are as good as all: within 1e-6 ms."""
+    irregular = np.cumsum(np.random.default_rng(8).normal(0.8, 0.04, 400))
+    near = irregular[(irregular > 100) & (irregular < 220)]
+    np.testing.assert_allclose(
+        tachogram(irregular, 130, 190, 4).nn_ms, tachogram(near, 130, 190, 4).nn_ms, atol=1e-6, rtol=0
+    )
+
+
 def test_a_slow_change_is_followed_by_the_spline() -> None:
     """Intervals of 800 ms plus a wave of 50 ms at 0.02 Hz come back within 0.5 ms, knots or not."""
     times = [0.0]

@@ -27,6 +27,9 @@ if TYPE_CHECKING:
 
 LEAST_INTERVALS = 3
 LEAST_COVERED_SHARE = 0.8
+# A spline forgets a knot by a factor of four at each further one: twenty are as good as all.
+_BEATS_BEYOND = 20
+_HOLE_S = 4.0
 _UNITS = {"heart_rate": "1/min", "mean_nn": "ms", "sdnn": "ms", "rmssd": "ms", "pnn50": "%"}
 _FEW = f"fewer than {LEAST_INTERVALS} valid intervals"
 
@@ -199,16 +202,17 @@ def tachogram(
     """
     from scipy.interpolate import CubicSpline
 
-    nn = valid_intervals(beat_times_s)
+    first, stop = np.searchsorted(beat_times_s, [start_s, stop_s])
+    nn = valid_intervals(beat_times_s[max(int(first) - _BEATS_BEYOND, 0) : int(stop) + _BEATS_BEYOND])
     covered = _covered_share(nn, start_s, stop_s)
-    near = _near(nn.time_s[nn.valid], start_s, stop_s)
-    time_s, interval_ms = nn.time_s[nn.valid][near], nn.interval_ms[nn.valid][near]
+    connected = _connected(nn.time_s[nn.valid], start_s, stop_s)
+    time_s, interval_ms = nn.time_s[nn.valid][connected], nn.interval_ms[nn.valid][connected]
     if time_s.size < 4:
         return Tachogram(np.empty(0), start_s, interpolation_hz, covered, "fewer than 4 valid intervals")
     grid_s = start_s + np.arange(round((stop_s - start_s) * interpolation_hz)) / interpolation_hz
     grid_s = grid_s[(grid_s >= time_s[0]) & (grid_s <= time_s[-1])]
     if covered < LEAST_COVERED_SHARE:
-        reason = f"valid intervals cover {covered:.0%} of the epoch, less than {LEAST_COVERED_SHARE:.0%}"
+        reason = f"valid intervals cover {covered:.1%} of the epoch, less than {LEAST_COVERED_SHARE:.0%}"
         return Tachogram(np.empty(0), start_s, interpolation_hz, covered, reason)
     nn_ms = np.asarray(CubicSpline(time_s, interval_ms)(grid_s), dtype=np.float64)
     return Tachogram(nn_ms, float(grid_s[0]), interpolation_hz, covered, "")
@@ -222,10 +226,12 @@ def _covered_share(nn: NN, start_s: float, stop_s: float) -> float:
     return float(np.sum(within_s) / (stop_s - start_s))
 
 
-def _near(time_s: NDArray[np.float64], start_s: float, stop_s: float) -> slice:
-    """Choose the knots of a stretch and ten beyond either end; each further one counts four times less."""
+def _connected(time_s: NDArray[np.float64], start_s: float, stop_s: float) -> slice:
+    """Leave out what lies outside a stretch and beyond a hole: a gap of the recording, or lost beats."""
     first, stop = np.searchsorted(time_s, [start_s, stop_s])
-    return slice(max(int(first) - 10, 0), int(stop) + 10)
+    after_hole = np.flatnonzero(np.diff(time_s) > _HOLE_S) + 1
+    before, behind = after_hole[after_hole <= first], after_hole[after_hole >= stop]
+    return slice(int(before[-1]) if before.size else 0, int(behind[0]) if behind.size else time_s.size)
 
 
 def heart_band_features(
