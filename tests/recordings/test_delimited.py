@@ -141,11 +141,11 @@ def test_file_of_another_layout_is_refused(delimited: Write, content: bytes, nam
         inspect(delimited(content, name))
 
 
-@pytest.mark.parametrize("body", ["1,2,3\n4\n5,6\n", "1,2\n4\n5,6,7\n", '1,"2,3"\n', '"1,2"\n'])
+@pytest.mark.parametrize("body", ["1,2,3\n4\n5,6\n", "1,2\n4\n5,6,7\n", '"1,2"\n'])
 def test_ragged_row_is_refused_whichever_column_is_read(delimited: Write, body: str) -> None:
     """Cells that are too many in one row do not make up for those missing in another."""
     for label in ("Fz", "Cz"):
-        with pytest.raises(RecordingError, match=r"cells in row|'2,3' in row 1"):
+        with pytest.raises(RecordingError, match=r"cells in row"):
             read(delimited("Fz,Cz\n" + body), (label,), AT_500, None, None)
 
 

@@ -17,7 +17,7 @@ from bandcairn.recordings import Declared, RawSignal, inspect, read
 from bandcairn.recordings.edf import _scale_uv
 from bandcairn.recordings.export import ExportChannel, write_bdf, write_edf
 from bandcairn.recordings.header import SignalHeader
-from bandcairn.signal import Annotation, ChannelFacts, Run
+from bandcairn.signal import Annotation, ChannelFacts, FileFacts, Run
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -332,6 +332,15 @@ def test_annotations_count_from_the_first_sample_and_are_sorted(build: Build, ch
         Annotation(0.1, 0.0, "lights öff"),
         Annotation(1.5, 30.0, "late"),
     )
+
+
+def test_file_of_annotations_alone_has_no_channels(tmp_path: Path) -> None:
+    """Scorings come as EDF+ files with records of 0 s."""
+    path = tmp_path / "scoring.edf"
+    edfio.Edf([], annotations=[edfio.EdfAnnotation(30, 30, "N2")]).write(path)
+    assert inspect(path) == FileFacts((), (Annotation(30.0, 30.0, "N2"),))
+    with pytest.raises(RecordingError, match="no channel Cz"):
+        whole(path, "Cz")
 
 
 @pytest.mark.parametrize("write", [write_edf, write_bdf])
