@@ -160,7 +160,7 @@ def test_noncentrality_interval_cuts_off_the_declared_tails(t: float, df: int, c
     assert_allclose(tails, [(1 - confidence) / 2] * 2, atol=1e-11, rtol=0)
 
 
-@pytest.mark.parametrize("t", [1e4, 1e8, 1e14])
+@pytest.mark.parametrize("t", [1e4, 1e8, 1e11, 1e13, 1e100])
 def test_noncentrality_interval_at_a_huge_t_is_that_of_the_chi_square(t: float) -> None:
     """Limiting case: the normal part vanishes beside t, so the ends are t sqrt(chi2 quantile / df).
 

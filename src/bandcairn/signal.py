@@ -5,12 +5,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-import numpy as np
-
 if TYPE_CHECKING:
     from collections.abc import Iterator
     from fractions import Fraction
 
+    import numpy as np
     from numpy.typing import NDArray
 
 

@@ -82,7 +82,7 @@ def run_project(
         if code in (130, -2):
             raise KeyboardInterrupt
         raise EngineError(f"the workflow engine ended with code {code}; its log is {LOG_NAME}")
-    return RunReport(computed, True, Outcome.of_run(run))
+    return RunReport(computed, rewritten=True, outcome=Outcome.of_run(run))
 
 
 def _refresh_results(project: Project) -> tuple[bool, Outcome]:

@@ -22,6 +22,8 @@ if TYPE_CHECKING:
 _REACH = 9.0
 _NODES = 100
 _TAIL = 1e-17
+# Beyond, the normal part is lost beside t in a float, and the chi-square part alone is exact to 1e-12.
+_HUGE = 1e12
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,6 +138,8 @@ def _noncentrality_at(t: float, df: float, probability: float) -> float:
     """Solve P(T <= t) = probability for the noncentrality, for t > 0, by Newton's method inside a bracket."""
     from scipy.special import chdtri, ndtri
 
+    if t > _HUGE:
+        return t * math.sqrt(chdtri(df, probability) / df)
     low, high = -_REACH, t * math.sqrt(chdtri(df, _TAIL) / df) + _REACH
     # First guess: T is nearly normal around the noncentrality, with variance 1 + t^2 / (2 df).
     at = t - float(ndtri(probability)) * math.sqrt(1 + t * t / (2 * df))
