@@ -14,6 +14,7 @@ import os
 import re
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 from typing import TYPE_CHECKING
 
 from bandcairn.recordings.refusal import refusal, unreadable
@@ -193,6 +194,8 @@ def decimal(path: Path, text: str, what: str) -> Fraction:
     return Fraction(text)
 
 
+# Channels of one recorder share their ranges.
+@lru_cache(maxsize=1024)
 def plain_number(text: str) -> str:
     """Return a decimal number as a fraction, so that 1.50 and 1.5 are alike; any other text unchanged."""
     return str(Fraction(text)) if _DECIMAL_NUMBER.fullmatch(text) else text
