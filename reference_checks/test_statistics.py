@@ -5,17 +5,21 @@ from __future__ import annotations
 import csv
 import math
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
-from reference import published
 from scipy import stats
 
 from bandcairn.statistics import Comparison, Result, adjust, compare, compare_table
 from bandcairn.statistics.effect_sizes import small_sample_factor
 from bandcairn.statistics.noncentral_t import noncentral_t_cdf, noncentrality_interval
 from bandcairn.statistics.registry import function_of
+from reference import published
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
 
 _HERE = Path(__file__).parent
 _PAIRED = Comparison("within", "level", "a", "b", "paired_t")
@@ -30,9 +34,13 @@ def _compare(comparison: Comparison, first: list[float], second: list[float]) ->
     return compare([*first, *second], people + others, levels, comparison)
 
 
-def _numbers(result: Result) -> list[float]:
-    found = [result.statistic, result.df, result.p, result.ci_low, result.ci_high]
+def _floats(*found: float | None) -> list[float]:
+    """Return the numbers of a result, none of which may be absent."""
     return [math.nan if number is None else number for number in found]
+
+
+def _numbers(result: Result) -> list[float]:
+    return _floats(result.statistic, result.df, result.p, result.ci_low, result.ci_high)
 
 
 def _columns(path: str) -> dict[str, list[str]]:
@@ -45,7 +53,7 @@ def test_student_sleep_paired() -> None:
     """Published example (Student 1908): half a unit of the last printed digit."""
     entry = published("statistics", "ST-STUDENT-PAIRED")
     table = _columns(entry.inputs["file"])
-    values = {**table, "extra": [float(value) for value in table["extra"]]}
+    values: dict[str, Sequence[object]] = {**table, "extra": [float(value) for value in table["extra"]]}
     comparison = Comparison("within", "group", "1", "2", "paired_t", unit="h")
 
     found = compare_table(values, comparison, value="extra", participant="ID")
@@ -106,7 +114,7 @@ def test_hedges_g_of_a_meta_analysis_textbook() -> None:
     # The published interval belongs to d of these same data.
     interval = published("statistics", "ST-DCI-IND")
     assert_allclose(
-        [found.effect_ci_low, found.effect_ci_high],
+        _floats(found.effect_ci_low, found.effect_ci_high),
         interval.expected[0],
         atol=interval.tolerance["abs"],
         rtol=0,
@@ -199,7 +207,9 @@ def test_paired_t_agrees_with_an_independent_library(seed: int) -> None:
     interval = expected.confidence_interval(0.95)
     numbers = [expected.statistic, expected.df, expected.pvalue, interval.low, interval.high]
     assert_allclose(_numbers(found), numbers, rtol=1e-12)
-    assert_allclose(found.effect_size, np.mean(first - second) / np.std(first - second, ddof=1), rtol=1e-12)
+    assert_allclose(
+        _floats(found.effect_size), np.mean(first - second) / np.std(first - second, ddof=1), rtol=1e-12
+    )
 
 
 @pytest.mark.parametrize("seed", range(20))
@@ -237,7 +247,9 @@ def test_welch_of_equal_groups_has_the_pooled_degrees_of_freedom() -> None:
     found = _compare(_WELCH, [0.0, 1.0, 2.0], [3.0, 4.0, 5.0])
 
     assert_allclose(_numbers(found)[:2], [-3 / math.sqrt(2 / 3), 4], rtol=1e-14)
-    assert_allclose(found.effect_size, -3 * math.sqrt(2 / math.pi), rtol=1e-14)  # J(4) = sqrt(2 / pi)
+    assert_allclose(
+        _floats(found.effect_size), -3 * math.sqrt(2 / math.pi), rtol=1e-14
+    )  # J(4) = sqrt(2 / pi)
 
 
 def test_holm_of_four_p_values() -> None:
