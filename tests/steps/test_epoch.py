@@ -60,12 +60,13 @@ def test_border_between_two_samples_goes_to_the_next_sample() -> None:
 
 
 def test_borders_are_exact_at_rates_without_a_binary_fraction() -> None:
-    """0.3 s at 10 Hz is sample 3, though 0.3 * 10 in floats may fall on either side of it."""
+    """0.1 s at 10 Hz is sample 1, though the float 0.1 is a little more: each tenth holds one sample."""
     tenths = tuple(Segment(str(k), k / 10, (k + 1) / 10) for k in range(100))
 
     epochs = cut_epochs(signal_of(ramp(100), Fraction(10)), 0.1, 0, tenths)
 
     np.testing.assert_array_equal(epochs.first, np.arange(100))
+    assert epochs.segment == tuple(segment.name for segment in tenths)
 
 
 def test_thirty_second_borders_are_exact_far_into_a_night() -> None:

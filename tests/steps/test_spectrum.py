@@ -56,6 +56,18 @@ def test_overlapping_epochs_are_not_copied_as_a_whole() -> None:
     assert peak - spectrum.density.nbytes < 4e6
 
 
+def test_a_whole_night_is_not_copied_as_a_whole() -> None:
+    """One long stretch of many segments is worked through in a few megabytes too."""
+    samples = np.random.default_rng(7).normal(size=1_000_000)
+    tracemalloc.start()
+
+    power_density(samples, 1000, method="welch", window="hann", segment_s=1, overlap=0.5)
+    peak = tracemalloc.get_traced_memory()[1]
+    tracemalloc.stop()
+
+    assert peak < 4e6
+
+
 def test_segments_beyond_one_block_are_all_counted() -> None:
     """A stretch with more segments than are transformed at once is the mean over all of them."""
     samples = np.random.default_rng(4).normal(size=100_000)
@@ -95,12 +107,24 @@ def test_samples_after_the_last_whole_segment_are_not_used() -> None:
 
 
 def test_segment_in_seconds_is_read_as_the_decimal_that_was_written() -> None:
-    """0.29 s at 100 Hz is 29 samples, though 0.29 * 100 is 28.999999999999996 in floats."""
+    """0.155 s at 100 Hz is 15.5 samples, rounded to the even 16; the float 0.155 is a little less."""
     spectrum = power_density(
-        np.ones(100), 100, method="welch", window="hann", segment_s=0.29, overlap=0, detrend="none"
+        np.ones(100), 100, method="welch", window="hann", segment_s=0.155, overlap=0, detrend="none"
     )
 
-    assert spectrum.frequencies_hz[1] == pytest.approx(100 / 29)
+    assert spectrum.frequencies_hz[1] == pytest.approx(100 / 16)
+
+
+def test_step_between_segments_is_rounded() -> None:
+    """Three quarters of 7 samples leave a step of 1.75: two, so that 11 samples hold three segments."""
+    samples = np.random.default_rng(6).normal(size=11)
+    spectrum = power_density(
+        samples, 1, method="welch", window="boxcar", segment_s=7, overlap=0.75, detrend="none"
+    )
+    stretches = np.lib.stride_tricks.sliding_window_view(samples, 7)[[0, 2, 4]]
+    alone = power_density(stretches, 1, method="periodogram", window="boxcar", detrend="none")
+
+    np.testing.assert_allclose(spectrum.density, alone.density.mean(axis=0), rtol=1e-12)
 
 
 @pytest.mark.parametrize(
