@@ -188,6 +188,7 @@ def response(
     return gain
 
 
+@lru_cache(maxsize=64)
 def effective_cutoffs(stages: tuple[FilterStage, ...], rate_hz: float) -> tuple[EffectiveCutoff, ...]:
     """Find the -3.01 dB points of each stage as applied.
 
