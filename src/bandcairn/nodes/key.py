@@ -10,6 +10,7 @@ from __future__ import annotations
 import hashlib
 import json
 import math
+from functools import cache
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -72,12 +73,17 @@ def recipe_json(
     raw : iterable of str
         Digests of the raw content that the step reads, in the order of the channels.
     """
-    by_role = ",".join(f'{json.dumps(role, ensure_ascii=False)}:"{key}"' for role, key in sorted(parents))
-    digests = ",".join(f'"{digest}"' for digest in raw)
+    by_role = ",".join([f'{_quoted(role)}:"{key}"' for role, key in sorted(parents)])
+    digests = ",".join([f'"{digest}"' for digest in raw])
     return (
         f'{{"key_format":{KEY_FORMAT},"parameters":{parameters},"parents":{{{by_role}}},'
         f'"raw":[{digests}],"step":"{step}","version":{version}}}'
     )
+
+
+@cache
+def _quoted(role: str) -> str:
+    return json.dumps(role, ensure_ascii=False)
 
 
 def key_of(recipe: str) -> str:

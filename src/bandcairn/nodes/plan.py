@@ -7,6 +7,7 @@ any numerical library.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from fractions import Fraction
 from functools import cache
 from typing import TYPE_CHECKING, Any
 
@@ -167,7 +168,9 @@ class _SignalChain:
         yield make("quality", "{}", signal=load.key)
         key = load.key
         resample = self.signal.resample
-        if resample is not None and resample.rate_hz != content.rate_hz(self.channels[0], rate_hz):
+        if resample is not None and _exact(resample.rate_hz) != _exact(
+            content.rate_hz(self.channels[0], rate_hz)
+        ):
             node = make("resample", canonical_json({"rate_hz": resample.rate_hz}), signal=key)
             key = node.key
             yield node
@@ -220,6 +223,11 @@ class _SignalChain:
 
     def _epoch_parameters(self, segments: tuple[tuple[str, float, float], ...]) -> str:
         return canonical_json({**self.signal.epoch.model_dump(mode="json"), "segments": segments})
+
+
+def _exact(rate_hz: Fraction | float | None) -> Fraction:
+    """Return a rate as the fraction its shortest text means: 102.4 and 512/5 are one rate."""
+    return Fraction(str(rate_hz))
 
 
 def _segments_by_recording(study: LoadedStudy) -> dict[str, tuple[tuple[str, float, float], ...]]:

@@ -11,8 +11,6 @@ import re
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
-import numpy as np
-
 from bandcairn.recordings.header import as_text
 from bandcairn.recordings.records import bytes_of, each_block
 from bandcairn.recordings.refusal import refusal
@@ -21,6 +19,7 @@ from bandcairn.signal import Annotation
 if TYPE_CHECKING:
     from pathlib import Path
 
+    import numpy as np
     from numpy.typing import NDArray
 
     from bandcairn.recordings.header import Header
@@ -72,6 +71,8 @@ def _lists_by_record(path: Path, header: Header) -> list[list[bytes]]:
 
 
 def _check_continuity(path: Path, header: Header, starts: list[bytes]) -> None:
+    import numpy as np
+
     found_s = _seconds(path, starts)
     if not header.channels:
         return
@@ -88,6 +89,8 @@ def _check_continuity(path: Path, header: Header, starts: list[bytes]) -> None:
 
 
 def _seconds(path: Path, starts: list[bytes]) -> NDArray[np.float64]:
+    import numpy as np
+
     record = next((record for record, start in enumerate(starts) if not _START.fullmatch(start)), None)
     if record is not None:
         found = f"data record {record + 1} without its start time"

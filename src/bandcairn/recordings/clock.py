@@ -8,14 +8,13 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
-import numpy as np
-
 from bandcairn.recordings.header import as_text
 from bandcairn.recordings.refusal import refusal
 
 if TYPE_CHECKING:
     from pathlib import Path
 
+    import numpy as np
     from numpy.typing import NDArray
 
     from bandcairn.errors import RecordingError
@@ -85,6 +84,8 @@ def read_clock(path: Path, cells: list[bytes]) -> Clock:
     RecordingError
         If a cell is no number, if the first time is not 0, or if the rows do not fit one rate.
     """
+    import numpy as np
+
     _check_times(path, cells)
     texts = np.strings.strip(np.array(cells))
     times_s = texts.astype(np.float64)
@@ -125,6 +126,8 @@ def _check_times(path: Path, cells: list[bytes]) -> None:
 
 def _decimals(texts: NDArray[np.bytes_]) -> NDArray[np.float64]:
     """Return how many digits stand behind the point of each text; an exponent moves the point."""
+    import numpy as np
+
     points = np.strings.find(texts, b".")
     decimals = np.where(points < 0, 0, np.strings.str_len(texts) - points - 1).astype(np.float64)
     exponents = (np.strings.find(texts, b"e") >= 0) | (np.strings.find(texts, b"E") >= 0)

@@ -18,8 +18,6 @@ import json
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-import numpy as np
-
 from bandcairn.recordings.annotations import read_annotations
 from bandcairn.recordings.clock import TIME_COLUMN
 from bandcairn.recordings.delimited import clock_of, load, parse
@@ -33,6 +31,7 @@ if TYPE_CHECKING:
     from fractions import Fraction
     from pathlib import Path
 
+    import numpy as np
     from numpy.typing import NDArray
 
     from bandcairn.recordings.header import Header, SignalHeader
@@ -152,6 +151,8 @@ def _description(header: Header, signal: SignalHeader) -> dict[str, object]:
 
 
 def _of_column(label: str, rate_hz: Fraction | None, column: NDArray[np.float64] | tuple[str, ...]) -> str:
+    import numpy as np
+
     numeric = isinstance(column, np.ndarray)
     digest = _opened(
         {

@@ -11,8 +11,6 @@ import io
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-import numpy as np
-
 from bandcairn.errors import UnknownUnitError
 from bandcairn.recordings.clock import TIME_COLUMN, Clock, read_clock
 from bandcairn.recordings.raw import RawSignal, cut
@@ -24,6 +22,7 @@ if TYPE_CHECKING:
     from fractions import Fraction
     from pathlib import Path
 
+    import numpy as np
     from numpy.typing import NDArray
 
     from bandcairn.recordings.declared import Declared
@@ -73,6 +72,8 @@ def read_delimited(
     path: Path, labels: tuple[str, ...], declared: Declared, start_s: float | None, stop_s: float | None
 ) -> RawSignal:
     """Read channels; the declaration supplies the unit, and the rate where the file has no clock."""
+    import numpy as np
+
     text = load(path)
     places = tuple(_place(text, label) for label in labels)
     unit_uv = _unit_uv(path, declared)
@@ -194,6 +195,8 @@ def _rate_hz(text: Text, declared: Declared) -> Fraction:
 
 
 def _check_numbers(text: Text, label: str, column: NDArray[np.float64] | tuple[str, ...]) -> None:
+    import numpy as np
+
     if isinstance(column, tuple):
         row = next(row for row, cell in enumerate(column) if _number(cell) is None)
         cell = column[row]
@@ -226,6 +229,7 @@ def _lines(text: Text) -> list[bytes]:
 
 def _parse_fast(text: Text, places: tuple[int, ...]) -> tuple[NDArray[np.float64], ...] | None:
     """Return columns as numbers, or None where a cell is none: the slow way then tells which."""
+    import numpy as np
     import pandas as pd
 
     # Correct rounding is the default from 3.1 on, where asking for it is deprecated.
@@ -287,6 +291,8 @@ def _split(path: Path, lines: str, separator: str) -> list[list[str]]:
 
 
 def _numbers_or_texts(cells: tuple[str, ...]) -> NDArray[np.float64] | tuple[str, ...]:
+    import numpy as np
+
     numbers = [_number(cell) for cell in cells]
     if None in numbers:
         return cells

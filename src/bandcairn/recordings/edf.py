@@ -9,13 +9,15 @@ from bandcairn.errors import UnknownUnitError
 from bandcairn.recordings.annotations import read_annotations
 from bandcairn.recordings.header import read_header, scaling_of
 from bandcairn.recordings.raw import RawSignal, cut
-from bandcairn.recordings.records import read_digital
-from bandcairn.recordings.refusal import refusal
+from bandcairn.recordings.refusal import refusal, unreadable
 from bandcairn.signal import ChannelFacts, FileFacts, Run
 from bandcairn.units import KNOWN_UNITS, microvolts_per
 
 if TYPE_CHECKING:
     from pathlib import Path
+
+    import numpy as np
+    from numpy.typing import NDArray
 
     from bandcairn.recordings.header import Header, SignalHeader
 
@@ -46,11 +48,33 @@ def read_edf(path: Path, labels: tuple[str, ...], start_s: float | None, stop_s:
     return RawSignal(
         labels=labels,
         rate_hz=rate_hz,
-        samples=read_digital(path, header, signals, stretch.first, stretch.stop),
+        samples=_digital(path, header, signals, slice(stretch.first, stretch.stop)),
         gain_uv=tuple(gain for gain, _ in scales),
         offset_uv=tuple(offset for _, offset in scales),
         runs=(Run(0, stretch.n_samples, stretch.start_s),),
     )
+
+
+def _digital(
+    path: Path, header: Header, signals: tuple[SignalHeader, ...], stretch: slice
+) -> tuple[NDArray[np.int16] | NDArray[np.int32], ...]:
+    """Read the integers of channels at their own rate; the header has been checked before."""
+    import edfio
+
+    try:
+        file: edfio.Edf | edfio.Bdf
+        if header.container == "EDF":
+            file = edfio.read_edf(path, lazy_load_data=True, header_encoding="latin-1")
+        else:
+            file = edfio.read_bdf(path, header_encoding="latin-1")
+        ordinary = [signal for signal in header.signals if signal not in header.annotation_signals]
+        return tuple(file.signals[ordinary.index(signal)].digital[stretch] for signal in signals)
+    except OSError as error:
+        raise unreadable(path, error) from error
+    except ValueError as error:
+        raise refusal(
+            path, str(error), "an EDF or BDF file", "Export the file anew from the recorder."
+        ) from error
 
 
 def _channel(path: Path, header: Header, label: str) -> SignalHeader:

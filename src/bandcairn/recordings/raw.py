@@ -7,14 +7,13 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING, TypeAlias
 
-import numpy as np
-
 from bandcairn.recordings.refusal import refusal
 from bandcairn.signal import Run, Signal
 
 if TYPE_CHECKING:
     from pathlib import Path
 
+    import numpy as np
     from numpy.typing import NDArray
 
     Samples: TypeAlias = NDArray[np.int16] | NDArray[np.int32] | NDArray[np.float64]
@@ -51,6 +50,8 @@ class RawSignal:
 
     def to_signal(self) -> Signal:
         """Return the channels in microvolt."""
+        import numpy as np
+
         scaled = np.empty((len(self.labels), self.runs[-1].stop))
         channels = zip(scaled, self.samples, self.gain_uv, self.offset_uv, strict=True)
         for row, samples, gain_uv, offset_uv in channels:

@@ -1,10 +1,8 @@
-"""The data records of EDF and BDF files: blocks of bytes in, integers out."""
+"""The data records of EDF and BDF files as blocks of bytes, for what needs no numbers: digests and annotations."""
 
 from __future__ import annotations
 
 from typing import TYPE_CHECKING
-
-import numpy as np
 
 from bandcairn.recordings.refusal import refusal, unreadable
 
@@ -12,6 +10,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterator
     from pathlib import Path
 
+    import numpy as np
     from numpy.typing import NDArray
 
     from bandcairn.recordings.header import Header, SignalHeader
@@ -41,6 +40,8 @@ def each_block(
     ndarray, shape (n_records of the block, header.record_bytes), uint8
         Valid until the next one: the memory is used again.
     """
+    import numpy as np
+
     stop = header.n_records if stop is None else stop
     per_block = max(1, min(stop - first, _BLOCK_BYTES // header.record_bytes))
     buffer = np.empty((per_block, header.record_bytes), dtype=np.uint8)
@@ -56,46 +57,8 @@ def each_block(
         raise unreadable(path, error) from error
 
 
-def read_digital(
-    path: Path, header: Header, signals: tuple[SignalHeader, ...], first: int, stop: int
-) -> tuple[NDArray[np.int16] | NDArray[np.int32], ...]:
-    """Read samples `first` up to `stop` of signals that share one rate.
-
-    Returns
-    -------
-    tuple of ndarray, shape (stop - first,)
-        int16 for EDF, int32 for BDF; one for each of `signals`.
-    """
-    per_record = signals[0].samples_per_record
-    first_record, stop_record = first // per_record, -(-stop // per_record)
-    dtype = np.int16 if header.container == "EDF" else np.int32
-    shape = (stop_record - first_record, per_record)
-    whole = [np.empty(shape, dtype=dtype) for _ in signals]
-    place = 0
-    for block in each_block(path, header, first_record, stop_record):
-        for samples, signal in zip(whole, signals, strict=True):
-            samples[place : place + len(block)] = _integers(block, signal, header)
-        place += len(block)
-    skipped = first_record * per_record
-    return tuple(samples.reshape(-1)[first - skipped : stop - skipped] for samples in whole)
-
-
 def bytes_of(block: NDArray[np.uint8], signal: SignalHeader) -> NDArray[np.uint8]:
     """Return the bytes of `signal` in a block of records, shape (n_records, n_bytes), contiguous."""
+    import numpy as np
+
     return np.ascontiguousarray(block[:, signal.first_byte : signal.stop_byte])
-
-
-def _integers(
-    block: NDArray[np.uint8], signal: SignalHeader, header: Header
-) -> NDArray[np.int16] | NDArray[np.int32]:
-    if header.container == "EDF":
-        return block.view("<i2")[:, signal.first_byte // 2 : signal.stop_byte // 2]
-    # Words of four bytes, three apart, that begin a byte early: the shift drops that byte and keeps the sign.
-    three = block[:, signal.first_byte : signal.stop_byte]
-    padded = np.zeros(three.size + 1, dtype=np.uint8)
-    padded[1:].reshape(three.shape)[:] = three
-    words = np.ndarray(
-        (len(block), signal.samples_per_record), "<i4", buffer=padded, strides=(three.shape[1], 3)
-    )
-    shifted: NDArray[np.int32] = words >> 8
-    return shifted
