@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.nodes.catalogue import VERSIONS
+from bandcairn.provenance.ledger import raw_of
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Mapping, Sequence
@@ -86,8 +87,7 @@ def _why(
     if former["step_version"] != VERSIONS[node.step]:
         found.append(f"step version raised from {former['step_version']} to {VERSIONS[node.step]}")
     found += differences(json.loads(former["parameters"]), json.loads(node.parameters))
-    former_raw = [key for role, key in json.loads(former["parents"]).items() if role.startswith("raw/")]
-    if former_raw != list(node.raw):
+    if raw_of(former) != node.raw:
         found.append(RAW_CHANGED)
     above = sorted({running[key] for _, key in node.parents if key in running}, key=list(VERSIONS).index)
     if not found and above:

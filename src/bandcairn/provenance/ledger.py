@@ -31,6 +31,8 @@ LEDGER_SCHEMA = {
     "peak_memory_mb": "number",
 }
 
+_RAW = "raw/"
+
 
 def ledger_rows(nodes: Iterable[Node], records: Mapping[str, Mapping[str, Any]]) -> list[dict[str, Any]]:
     """Return the rows of the ledger in the order of the nodes.
@@ -47,7 +49,7 @@ def ledger_rows(nodes: Iterable[Node], records: Mapping[str, Mapping[str, Any]])
 
 def _row(node: Node, record: Mapping[str, Any]) -> dict[str, Any]:
     # The raw content stands among the parents: with it a row holds the whole recipe.
-    parents = dict(node.parents) | {f"raw/{index}": digest for index, digest in enumerate(node.raw)}
+    parents = dict(node.parents) | {f"{_RAW}{index}": digest for index, digest in enumerate(node.raw)}
     return {
         "key": node.key,
         "step": node.step,
@@ -63,6 +65,13 @@ def _row(node: Node, record: Mapping[str, Any]) -> dict[str, Any]:
         "seconds": record["seconds"],
         "peak_memory_mb": record["peak_memory_mb"],
     }
+
+
+def raw_of(row: Mapping[str, Any]) -> tuple[str, ...]:
+    """Return the digests of the raw content that a row names, in the order of the channels."""
+    # The names are sorted as text in a row: raw/10 stands before raw/2.
+    parents = json.loads(row["parents"])
+    return tuple(parents[f"{_RAW}{index}"] for index in range(sum(role.startswith(_RAW) for role in parents)))
 
 
 def records_of(rows: Iterable[Mapping[str, Any]]) -> dict[str, dict[str, Any]]:

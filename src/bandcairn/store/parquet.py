@@ -7,6 +7,7 @@ of the raw file.
 
 from __future__ import annotations
 
+import hashlib
 import json
 from typing import TYPE_CHECKING, Any
 
@@ -24,6 +25,7 @@ if TYPE_CHECKING:
 
 _FACTS = b"bandcairn"
 _RECORD = b"bandcairn_record"
+_RECORD_SHA256 = b"bandcairn_record_sha256"
 _WHOLE_FILE = 1 << 62
 
 
@@ -35,7 +37,8 @@ def write_frame(path: Path, frame: Frame, record: Mapping[str, Any]) -> None:
         pa.field(name, array.type, nullable=array.null_count > 0)
         for name, array in zip(frame.columns, arrays, strict=True)
     ]
-    metadata = {_FACTS: json.dumps(dict(frame.facts)), _RECORD: json.dumps(dict(record))}
+    told = json.dumps(dict(record)).encode()
+    metadata = {_FACTS: json.dumps(dict(frame.facts)), _RECORD: told, _RECORD_SHA256: _sha256(told)}
     table = pa.Table.from_arrays(arrays, schema=pa.schema(fields, metadata))
     packed = {field.name: "DELTA_BINARY_PACKED" for field in fields if pa.types.is_integer(field.type)}
     pq.write_table(
@@ -55,20 +58,30 @@ def read_frame(path: Path) -> tuple[Frame, dict[str, Any]]:
 
     Raises
     ------
-    OSError, pyarrow.ArrowInvalid, KeyError, ValueError
-        If the file is no whole node.
+    OSError, pyarrow.ArrowException, KeyError, TypeError, ValueError
+        If the file is no whole node, or its record does not match the digest written with it.
     """
     with pq.ParquetFile(path, memory_map=True) as file:
         table = file.read(use_threads=False)
-    metadata = table.schema.metadata
+    metadata = table.schema.metadata or {}
     columns = {name: _from_arrow(table.column(name)) for name in table.column_names}
-    return Frame(columns, json.loads(metadata[_FACTS])), json.loads(metadata[_RECORD])
+    return Frame(columns, json.loads(metadata[_FACTS])), _record(metadata)
 
 
 def read_record(path: Path) -> dict[str, Any]:
-    """Return the provenance record of a node's file without reading its data."""
-    record: dict[str, Any] = json.loads(pq.read_schema(path, memory_map=True).metadata[_RECORD])
+    """Return the provenance record of a node's file without reading its data; errors as in `read_frame`."""
+    return _record(pq.read_schema(path, memory_map=True).metadata or {})
+
+
+def _record(metadata: Mapping[bytes, bytes]) -> dict[str, Any]:
+    if _sha256(metadata[_RECORD]) != metadata[_RECORD_SHA256]:
+        raise ValueError("its record does not match the digest written with it")
+    record: dict[str, Any] = json.loads(metadata[_RECORD])
     return record
+
+
+def _sha256(content: bytes) -> bytes:
+    return hashlib.sha256(content).hexdigest().encode()
 
 
 def _to_arrow(column: Column) -> pa.Array:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import os
 import threading
 from typing import TYPE_CHECKING, Any
@@ -22,6 +23,8 @@ if TYPE_CHECKING:
     from bandcairn.store.frame import Frame
 
 _MEMORY_BYTES = 384 << 20
+# What the reading of a torn or altered file raises, wherever the damage lies.
+_DAMAGE = (OSError, pa.ArrowException, KeyError, TypeError, ValueError)
 
 
 class Store:
@@ -93,9 +96,10 @@ class Store:
         path = self.path(step, key)
         try:
             frame, record = read_frame(path)
-        except (OSError, pa.ArrowException, KeyError, ValueError) as error:
+            whole = record["key"] == key and data_digest(frame) == record["data_digest"]
+        except _DAMAGE as error:
             raise DamagedNodeError(f"{step} node {key[:12]} cannot be read: {error}") from error
-        if record["key"] != key or data_digest(frame) != record["data_digest"]:
+        if not whole:
             raise DamagedNodeError(f"{step} node {key[:12]} does not match the digest written with it")
         self._memory.put(key, frame)
         return frame
@@ -106,12 +110,15 @@ class Store:
         Raises
         ------
         DamagedNodeError
-            If the file cannot be read.
+            If the file cannot be read, or the record is altered or another node's.
         """
         try:
-            return read_record(self.path(step, key))
-        except (OSError, pa.ArrowException, KeyError, ValueError, TypeError) as error:
+            record = read_record(self.path(step, key))
+        except _DAMAGE as error:
             raise DamagedNodeError(f"{step} node {key[:12]} cannot be read: {error}") from error
+        if record["key"] != key:
+            raise DamagedNodeError(f"the file of {step} node {key[:12]} holds node {record['key'][:12]}")
+        return record
 
     def remove(self, step: str, key: str) -> None:
         """Remove a node, from memory and from disk."""
@@ -122,8 +129,10 @@ class Store:
 def _verify_written(path: Path, frame: Frame, key: str) -> None:
     """Compare a file just written with what was to be written."""
     written, _ = read_frame(path)
-    same = written.columns.keys() == frame.columns.keys() and all(
-        _equal(written.columns[name], column) for name, column in frame.columns.items()
+    same = (
+        list(written.columns) == list(frame.columns)
+        and json.dumps(written.facts) == json.dumps(dict(frame.facts))
+        and all(_equal(written.columns[name], column) for name, column in frame.columns.items())
     )
     if not same:
         raise DamagedNodeError(
@@ -134,5 +143,7 @@ def _verify_written(path: Path, frame: Frame, key: str) -> None:
 def _equal(first: Any, second: Any) -> bool:  # noqa: ANN401 - a column of either kind
     if isinstance(second, tuple):
         return bool(first == second)
+    if isinstance(first, tuple) or first.dtype != second.dtype:
+        return False
     nullable = second.dtype.kind == "f" and np.isnan(second).any()
     return bool(np.array_equal(first, second, equal_nan=nullable))
