@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import os
 import sys
+from typing import Protocol, runtime_checkable
 
-import click
 import typer
 
 from bandcairn.cli import check, demo, plan, prune, run
@@ -43,28 +43,41 @@ def exit_code_of(arguments: list[str]) -> int:
     """
     try:
         code = app(arguments, standalone_mode=False)
-    except click.exceptions.Abort:
-        return INTERRUPTED
-    except click.ClickException as error:
-        error.show()
-        return STUDY_AT_FAULT
-    except BrokenPipeError:
+    except (BrokenPipeError, SystemExit):  # whoever read the output, such as `head`, has had enough
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return DONE
     except (Exception, KeyboardInterrupt) as error:  # noqa: BLE001 - a user meets a sentence, whatever went wrong
+        if isinstance(error, _UsageFault):
+            error.show()
+            return STUDY_AT_FAULT
         code, told = _verdict(error)
         print_error(told, as_json="--json" in arguments)
     return code if isinstance(code, int) else DONE
 
 
+@runtime_checkable
+class _UsageFault(Protocol):
+    """A command line that cannot be understood. Known by its shape: its class has no public name in all versions."""
+
+    exit_code: int
+
+    def show(self) -> None:
+        """Print what is wrong with the command line."""
+
+
 def _verdict(error: BaseException) -> tuple[int, Exception | str]:
     """Return the exit code of an error, and what to say of it."""
-    if isinstance(error, KeyboardInterrupt):
+    if isinstance(error, (KeyboardInterrupt, typer.Abort)):
         return INTERRUPTED, "interrupted; what was computed is kept: run again to go on"
     if isinstance(error, (EngineError, DamagedNodeError)):
         return FAULT, error
     if isinstance(error, BandcairnError):
         return STUDY_AT_FAULT, error
+    if isinstance(error, OSError) and error.filename is not None:
+        return (
+            STUDY_AT_FAULT,
+            f"{error.filename}: {error.strerror}. Check the path, its permissions and the disk.",
+        )
     return FAULT, fault_sentence(error)
 
 

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import json
 import os
+from contextlib import suppress
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
@@ -27,6 +28,7 @@ def reporter() -> Callable[[Node, float], None]:
     def report(node: Node, seconds: float) -> None:
         # One write below the pipe's atomic size: lines of two threads never mix.
         line = json.dumps({"step": node.step, "recording": node.recording[:80], "seconds": seconds})
-        os.write(descriptor, f"{line}\n".encode())
+        with suppress(BrokenPipeError):  # the watcher is gone; the work goes on
+            os.write(descriptor, f"{line}\n".encode())
 
     return report

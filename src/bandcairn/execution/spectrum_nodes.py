@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
@@ -20,7 +20,7 @@ from bandcairn.steps.eeg import eeg_features
 from bandcairn.steps.emg import EmgEpochs, emg_features, rms
 from bandcairn.steps.epoch import TOO_FLAT, TOO_LARGE, Reject, Segment, cut_epochs, epoch_view
 from bandcairn.steps.features import stack_channels
-from bandcairn.steps.heart import heart_band_features, heart_features, tachogram
+from bandcairn.steps.heart import NO_TACHOGRAM, heart_band_features, heart_features, tachogram
 from bandcairn.steps.spectrum import power_density
 from bandcairn.store.frame import Frame
 
@@ -120,7 +120,8 @@ def _beat_spectra(parents: Mapping[str, Frame], options: Mapping[str, Any], inte
     length_s = _length_s(parents["epochs"])
     rate_hz = Fraction(str(interpolation_hz))
     segment = _segment_samples(0, rate_hz, options)
-    densities = {}
+    densities: dict[str, NDArray[np.float64]] = {}
+    refused: dict[str, list[str]] = {}
     for channel in parents["beats"].facts["channels"]:
         times_s = _beat_times(parents["beats"], channel)
         rows = np.full((len(epochs.start_s), segment // 2 + 1), np.nan)
@@ -128,8 +129,11 @@ def _beat_spectra(parents: Mapping[str, Frame], options: Mapping[str, Any], inte
             series = tachogram(times_s, start_s, start_s + length_s, interpolation_hz)
             if len(series.nn_ms) >= segment:
                 row[:] = power_density(series.nn_ms, interpolation_hz, **options).density
+            else:
+                told = series.note or f"its intervals last {len(series.nn_ms) / rate_hz:g} s, less than segment_s"
+                refused.setdefault(channel, []).append(told)
         densities[channel] = rows
-    return spectra_to_frame(densities, rate_hz / segment, rows="epochs")
+    return spectra_to_frame(densities, rate_hz / segment, rows="epochs", refused=refused)
 
 
 def features_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
@@ -184,8 +188,16 @@ def _ecg_values(
         with_spectrum = used & np.isfinite(spectrum.density[:, 0])
         density = _mean_density(spectrum.density, with_spectrum)
         in_bands = heart_band_features(spectrum.frequencies_hz, density[None], bands_hz, length_s)
-        channels.append((*in_time, *in_bands))
+        refused = parents["spectrum"].facts["refused"].get(channel, [])
+        channels.append((*in_time, *(_with_reason(value, refused) for value in in_bands)))
     return stack_channels(channels)
+
+
+def _with_reason(value: FeatureValue, refused: list[str]) -> FeatureValue:
+    """Say why there is no spectrum where a value is missing for want of one."""
+    if value.note != (NO_TACHOGRAM,) or not refused:
+        return value
+    return replace(value, note=(f"{NO_TACHOGRAM}: {refused[0]}",))
 
 
 def _emg_values(

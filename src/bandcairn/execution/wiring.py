@@ -7,7 +7,10 @@ one run.
 
 from __future__ import annotations
 
+import os
 import shutil
+import time
+from contextlib import suppress
 from functools import cached_property
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -20,14 +23,19 @@ from bandcairn.execution.publish import publish, published
 from bandcairn.store.layout import STORE_NAME, make_private_folder
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Sequence
+    from collections.abc import Callable, Iterable, Sequence
 
     from bandcairn.execution.project import Project
     from bandcairn.execution.worker import Work, Worker
     from bandcairn.nodes.node import Node
 
 # Relative to the study folder, which is the working directory of every job.
-RECEIPTS = f"{STORE_NAME}/.receipts"
+_RECEIPTS = f"{STORE_NAME}/.receipts"
+# Receipts of a run lie apart from those of another that may work on the same study at the same time. The name is
+# handed down to every process of the run.
+RUN_VARIABLE = "BANDCAIRN_RUN"
+# A run that was killed leaves its receipts; no run goes on for a week without a receipt.
+_STALE_S = 7 * 86400
 
 
 class Wiring:
@@ -103,7 +111,7 @@ class Wiring:
         """
         from bandcairn.execution.worker import Work
 
-        receipts = [path for path in sorted(Path(RECEIPTS).glob("*/*.json")) if path.stem in self._names]
+        receipts = sorted(Path(receipts_folder()).glob("*/*.json"))
         works = [Work.from_json(path.read_text("utf-8")) for path in receipts]
         failures = [failure for work in works for failure in work.failures]
         records = {record["key"]: record for work in works for record in work.records}
@@ -112,10 +120,11 @@ class Wiring:
             raise EngineError(f"results written, but {outcome.failed_sentence}; see results/exclusions.csv")
         _finish(Work([], []), receipt_path, log_path)
 
-    @property
-    def _names(self) -> set[str]:
-        """Names of the receipts of this plan; others are left from a run that was killed."""
-        return {*self.batches, self.plan_id}
+    def finish(self, engine_logs: Iterable[str]) -> None:
+        """Remove what the engine leaves in the study: receipts, and its logs, which name machine and user."""
+        clear_receipts(self.project.folder)
+        for log in engine_logs:
+            Path(log).unlink(missing_ok=True)
 
     def _study_nodes(self) -> Sequence[Node]:
         return self.worker.plan_study_nodes()
@@ -123,22 +132,39 @@ class Wiring:
 
 def open_wiring() -> Wiring:
     """Open the study in the working directory, as the engine has set it."""
+    os.environ.setdefault(RUN_VARIABLE, run_name())
     return Wiring(open_project(Path.cwd()))
+
+
+def run_name() -> str:
+    """Return a name for a run of this process."""
+    return f"{time.time_ns():x}-{os.getpid()}"
+
+
+def receipts_folder() -> str:
+    """Return the folder of this run's receipts, relative to the study."""
+    return f"{_RECEIPTS}/{os.environ[RUN_VARIABLE]}"
 
 
 def receipt(step: str, name: str) -> str:
     """Return the path of a receipt, relative to the study."""
-    return f"{RECEIPTS}/{step}/{name}.json"
+    return f"{receipts_folder()}/{step}/{name}.json"
 
 
 def log_of(step: str, name: str) -> str:
     """Return the path of a job's log, relative to the study."""
-    return f"{RECEIPTS}/{step}/{name}.log"
+    return f"{receipts_folder()}/{step}/{name}.log"
 
 
-def clear_receipts(study_folder: Path) -> None:
-    """Remove the receipts and logs of earlier runs."""
-    shutil.rmtree(study_folder / RECEIPTS, ignore_errors=True)
+def clear_receipts(study_folder: Path, run: str = "") -> None:
+    """Remove the receipts and logs of a run, this process's if not named, and of runs that were killed long ago."""
+    receipts = study_folder / _RECEIPTS
+    shutil.rmtree(receipts / (run or os.environ[RUN_VARIABLE]), ignore_errors=True)
+    with suppress(OSError):  # another run may be clearing too, or its receipts may lie there
+        for folder in receipts.iterdir():
+            if time.time() - folder.stat().st_mtime > _STALE_S:
+                shutil.rmtree(folder, ignore_errors=True)
+        receipts.rmdir()
 
 
 def _finish(work: Work, receipt_path: str, log_path: str) -> None:

@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import json
+import os
 import traceback
 from dataclasses import asdict, dataclass
+from pathlib import PurePath
 from time import perf_counter
 from typing import TYPE_CHECKING, Any
 
@@ -85,7 +87,7 @@ class Worker:
             except RecordingError as error:
                 self._fail(node, done, str(error))
             except Exception as error:  # noqa: BLE001 - a fault in one recording must not stop the others
-                fault = traceback.format_exc()
+                fault = _trace(error)
                 self._fail(node, done, f"fault of bandcairn: {type(error).__name__}: {error}", fault)
         return done
 
@@ -99,6 +101,8 @@ class Worker:
 
     def _fail(self, node: Node, done: Work, reason: str, fault: str = "") -> None:
         self._failed.add(node.key)
+        # A name of a folder may tell more than it should: results are handed on.
+        reason = reason.replace(f"{self.project.folder}{os.sep}", "")
         done.failures.append(Failure(node.recording, node.signal, node.step, reason, fault))
 
     def _make(self, node: Node, records: list[dict[str, Any]]) -> Frame:
@@ -120,6 +124,13 @@ class Worker:
         except DamagedNodeError:
             self.store.remove(node.step, key)
             return self._make(node, records)
+
+
+def _trace(error: BaseException) -> str:
+    """Return where an error came from, innermost last, without the folders of this machine."""
+    frames = traceback.extract_tb(error.__traceback__)
+    places = (f"{PurePath(frame.filename).name}, line {frame.lineno}, in {frame.name}" for frame in frames)
+    return "\n".join((*places, type(error).__name__))
 
 
 @dataclass(frozen=True, slots=True)
