@@ -130,7 +130,10 @@ def _beat_spectra(parents: Mapping[str, Frame], options: Mapping[str, Any], inte
             if len(series.nn_ms) >= segment:
                 row[:] = power_density(series.nn_ms, interpolation_hz, **options).density
             else:
-                told = series.note or f"its intervals last {len(series.nn_ms) / rate_hz:g} s, less than segment_s"
+                told = (
+                    series.note
+                    or f"its intervals last {len(series.nn_ms) / rate_hz:g} s, less than segment_s"
+                )
                 refused.setdefault(channel, []).append(told)
         densities[channel] = rows
     return spectra_to_frame(densities, rate_hz / segment, rows="epochs", refused=refused)

@@ -31,6 +31,7 @@ LEAST_COVERED_SHARE = 0.8
 _BEATS_BEYOND = 20
 _HOLE_S = 4.0
 _UNITS = {"heart_rate": "1/min", "mean_nn": "ms", "sdnn": "ms", "rmssd": "ms", "pnn50": "%"}
+NO_TACHOGRAM = "no tachogram in any kept epoch"
 _FEW = f"fewer than {LEAST_INTERVALS} valid intervals"
 
 
@@ -283,9 +284,7 @@ def heart_band_features(
 
 
 def _power(feature: str, band: str, power: NDArray[np.float64]) -> FeatureValue:
-    return FeatureValue(
-        feature, band, "ms^2", power, notes_where_null(power, "no tachogram in any kept epoch")
-    )
+    return FeatureValue(feature, band, "ms^2", power, notes_where_null(power, NO_TACHOGRAM))
 
 
 def _unless_too_short(power: FeatureValue, low_hz: float, epoch_length_s: float) -> FeatureValue:

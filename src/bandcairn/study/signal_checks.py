@@ -178,10 +178,17 @@ def _check_interpolation(path: Path, signal: EcgSignal) -> Iterator[Fault]:
             yield Fault(band.path, str(band), allowed, "Lower the band, or raise interpolation_hz.")
 
 
+# The intervals of an epoch begin with its first beat and end with its last: a second or two is lost at either end.
+_ENDS_OF_INTERVALS_S = 4.0
+
+
 def _check_resolution(path: Path, signal: AnySignal) -> Iterator[Fault]:
     epoch_s, segment_s = signal.epoch.length_s, signal.spectrum.segment_s
-    if segment_s is not None and segment_s > epoch_s:
+    longest_s = epoch_s - _ENDS_OF_INTERVALS_S if isinstance(signal, EcgSignal) else epoch_s
+    if segment_s is not None and segment_s > longest_s:
         allowed = f"at most epoch.length_s, {epoch_s:g} s"
+        if longest_s < epoch_s:
+            allowed = f"at most {longest_s:g} s: epoch.length_s less an interval between beats at either end"
         remedy = "Shorten the segment, or lengthen the epoch."
         yield Fault((*path, "spectrum", "segment_s"), f"{segment_s:g} s", allowed, remedy)
     if isinstance(signal, EmgSignal):
