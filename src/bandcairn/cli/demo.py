@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from pathlib import Path
 from time import perf_counter
-from typing import TYPE_CHECKING, Annotated, Any
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
@@ -50,38 +50,12 @@ def demo(
 
 
 def _show_statistics(project: Project) -> None:
-    """Print the answers as a table."""
-    from rich.console import Console
-    from rich.table import Table
-
+    """Print the answers."""
+    from bandcairn.cli.answers import answer_lines
     from bandcairn.store.tables import read_table
 
-    table = Table(
-        title=f"{project.study.description.study}: answers", title_justify="left", box=None, pad_edge=False
-    )
-    for heading in ("question", "channel", "estimate", "95 % interval", "unit", "n", "p", "p adjusted"):
-        table.add_column(heading, justify="left" if heading in ("question", "channel", "unit") else "right")
-    for row in read_table(project.results_folder / "statistics.parquet"):
-        table.add_row(*_cells(row))
-    Console().print(table)
-
-
-def _cells(row: dict[str, Any]) -> tuple[str, ...]:
-    interval = "" if row["ci_low"] is None else f"[{row['ci_low']:.3g}, {row['ci_high']:.3g}]"
-    return (
-        row["question"],
-        row["channel"],
-        row["status"] if row["estimate"] is None else f"{row['estimate']:.3g}",
-        interval,
-        row["estimate_unit"],
-        str(row["n_participants"]),
-        p_value(row["p"]),
-        p_value(row["p_adjusted"]),
-    )
-
-
-def p_value(p: float | None) -> str:
-    """Return a p value as papers print it: three digits, and never 0."""
-    if p is None:
-        return ""
-    return "< .001" if p < 0.001 else f"{p:.3f}".removeprefix("0")
+    say()
+    say(f"{project.study.description.study}: answers")
+    for line in answer_lines(read_table(project.results_folder / "statistics.parquet")):
+        say(line)
+    say()
