@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator, Mapping, Sequence
 
-_HEADINGS = ("channel", "estimate", "95 % interval", "n", "p", "p adjusted")
+_HEADINGS = ("channel", "estimate", "confidence interval", "n", "p", "p adjusted")
 
 
 def answer_lines(rows: Iterable[Mapping[str, Any]]) -> Iterator[str]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import signal
 import sys
 from typing import Protocol, runtime_checkable
 
@@ -30,6 +31,8 @@ for module in (demo, check, plan, run, prune):
 
 def run_app() -> None:
     """Run the command line and leave with its exit code."""
+    # Whoever asks the program to end, such as a scheduler at the end of its time, interrupts it too.
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
     sys.exit(exit_code_of(sys.argv[1:]))
 
 
@@ -42,7 +45,7 @@ def exit_code_of(arguments: list[str]) -> int:
         What stands after the name of the program.
     """
     try:
-        code = app(arguments, standalone_mode=False)
+        return _run_command(arguments)
     except (BrokenPipeError, SystemExit):  # whoever read the output, such as `head`, has had enough
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return DONE
@@ -52,6 +55,13 @@ def exit_code_of(arguments: list[str]) -> int:
             return STUDY_AT_FAULT
         code, told = _verdict(error)
         print_error(told, as_json="--json" in arguments)
+        return code
+
+
+def _run_command(arguments: list[str]) -> int:
+    code = app(arguments, standalone_mode=False)
+    if code == INTERRUPTED:  # what the framework makes of an interrupt
+        raise KeyboardInterrupt
     return code if isinstance(code, int) else DONE
 
 

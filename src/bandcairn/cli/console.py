@@ -110,16 +110,19 @@ def _progress_bar(unit: str) -> Progress:
     from rich.progress import BarColumn, Progress, ProgressColumn, TextColumn, TimeRemainingColumn
     from rich.text import Text
 
+    class Count(ProgressColumn):
+        def render(self, task: Any) -> Text:  # noqa: ANN401 - rich's own type
+            return Text("" if task.total is None else f"{task.completed:.0f} of {task.total:.0f} {unit}")
+
     class Rate(ProgressColumn):
         def render(self, task: Any) -> Text:  # noqa: ANN401 - rich's own type
-            return Text(f"{task.speed:.0f} {unit}/s" if task.speed else "")
+            return Text(f"{task.speed:.0f} a second, left" if task.speed else "")
 
     return Progress(
         TextColumn("{task.description}"),
         BarColumn(bar_width=30),
-        TextColumn("{task.completed:.0f} of {task.total:.0f}" if unit else ""),
+        Count(),
         Rate(),
-        TextColumn("left"),
         TimeRemainingColumn(compact=True),
         console=Console(stderr=True),
         transient=True,

@@ -96,10 +96,12 @@ def _refresh_results(project: Project) -> tuple[bool, Outcome]:
     if published(project):
         return False, Outcome.of_run(read_run(project.results_folder))
     _refuse_unwritable(project)
-    from bandcairn.store.store import Store
+    from bandcairn.execution.worker import Worker
 
+    worker = Worker(project)
     nodes = list(project.plan.study_nodes.values())
-    return True, publish(project, nodes, Store(project.store_folder), {}, ())
+    records = {record["key"]: record for record in worker.heal(nodes)}
+    return True, publish(project, nodes, worker.store, records, ())
 
 
 def _refuse_unwritable(project: Project) -> None:

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import hashlib
 import json
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
+from bandcairn.errors import DamagedNodeError
 from bandcairn.nodes.plan import design_columns
 
 if TYPE_CHECKING:
@@ -111,7 +112,7 @@ def publish(
     from bandcairn.provenance.ledger import LEDGER_SCHEMA
     from bandcairn.store.tables import write_table
 
-    failures = (*_unreadable(project), *failures)
+    failures = (*_unreadable(project), *_at_every_place(project, failures))
     frames = {node.key: _rows(store, node) for node in study_nodes}
     features = _features(
         project,
@@ -196,6 +197,18 @@ def _unreadable(project: Project) -> list[Failure]:
     return [Failure(name, "", "load", reason) for name, reason in sorted(project.survey.unreadable.items())]
 
 
+def _at_every_place(project: Project, failures: Sequence[Failure]) -> Iterator[Failure]:
+    """Yield each failure at every place where its node stands: recordings of equal content share their nodes."""
+    slots = project.plan.slots
+    places: dict[str, list[tuple[str, str]]] = {}
+    for (recording, signal, _), key in slots.items():
+        places.setdefault(key, []).append((recording, signal))
+    for failure in failures:
+        own = failure.recording, failure.signal
+        for recording, signal in places.get(slots.get((*own, failure.step), ""), [own]):
+            yield replace(failure, recording=recording, signal=signal)
+
+
 def _exclusions(
     project: Project,
     features: Sequence[Mapping[str, Any]],
@@ -257,9 +270,20 @@ def _ledger(
     nodes = [*project.plan.recording_nodes.values(), *study_nodes]
     present = present_keys(store.folder, nodes)
     known = {**records_of(read_ledger(project.results_folder)), **records}
-    stored = [node for node in nodes if node.key in present]
-    told = {node.key: known.get(node.key) or store.record(node.step, node.key) for node in stored}
-    return ledger_rows(stored, told)
+    told = {
+        node.key: known.get(node.key) or _stored_record(store, node) for node in nodes if node.key in present
+    }
+    whole = {key: record for key, record in told.items() if record}
+    return ledger_rows([node for node in nodes if node.key in whole], whole)
+
+
+def _stored_record(store: Store, node: Node) -> dict[str, Any]:
+    """Return what a node's file tells of itself; a damaged file is removed, so that the next run computes it anew."""
+    try:
+        return store.record(node.step, node.key)
+    except DamagedNodeError:
+        store.remove(node.step, node.key)
+        return {}
 
 
 def _write_run(project: Project, files: Sequence[Path], failures: Sequence[Failure], computed: int) -> None:

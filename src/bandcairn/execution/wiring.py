@@ -114,8 +114,10 @@ class Wiring:
         receipts = sorted(Path(receipts_folder()).glob("*/*.json"))
         works = [Work.from_json(path.read_text("utf-8")) for path in receipts]
         failures = [failure for work in works for failure in work.failures]
-        records = {record["key"]: record for work in works for record in work.records}
-        outcome = publish(self.project, self._study_nodes(), self.worker.store, records, failures)
+        nodes = self._study_nodes()
+        records = [record for work in works for record in work.records] + self.worker.heal(nodes)
+        told = {record["key"]: record for record in records}
+        outcome = publish(self.project, nodes, self.worker.store, told, failures)
         if outcome.failures:
             raise EngineError(f"results written, but {outcome.failed_sentence}; see results/exclusions.csv")
         _finish(Work([], []), receipt_path, log_path)

@@ -99,6 +99,19 @@ class Worker:
         self._nodes.update(planned)
         return list(planned.values())
 
+    def heal(self, nodes: Iterable[Node]) -> list[dict[str, Any]]:
+        """Read nodes that shall be whole, and compute the damaged ones anew.
+
+        Returns
+        -------
+        list of dict
+            The records of the nodes computed.
+        """
+        records: list[dict[str, Any]] = []
+        for node in nodes:
+            self._frame(node.key, records)
+        return records
+
     def _fail(self, node: Node, done: Work, reason: str, fault: str = "") -> None:
         self._failed.add(node.key)
         # A name of a folder may tell more than it should: results are handed on.
