@@ -10,10 +10,8 @@ from typing import Protocol, runtime_checkable
 import typer
 
 from bandcairn.cli import check, demo, plan, prune, run
-from bandcairn.cli.console import print_error
+from bandcairn.cli.console import DONE, FAULT, INTERRUPTED, STUDY_AT_FAULT, print_error
 from bandcairn.errors import BandcairnError, DamagedNodeError, EngineError
-
-DONE, ANSWER_IS_NO, STUDY_AT_FAULT, SOME_FAILED, FAULT, INTERRUPTED = 0, 1, 2, 3, 70, 130
 
 app = typer.Typer(
     name="bandcairn",

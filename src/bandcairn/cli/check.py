@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from bandcairn.cli.console import AsJson, StudyFolder, note, print_json, say
+from bandcairn.cli.console import DONE, SOME_FAILED, AsJson, StudyFolder, note, print_json, say
 
 if TYPE_CHECKING:
     import typer
@@ -16,17 +16,19 @@ def register(app: typer.Typer) -> None:
     app.command(epilog="Example: bandcairn check demo-study")(check)
 
 
-def check(study: StudyFolder, *, as_json: AsJson = False) -> None:
+def check(study: StudyFolder, *, as_json: AsJson = False) -> int:
     """Check a study's description, tables and files, and print it with every default.
 
-    Nothing is computed and nothing is written. All problems of one pass are told together.
+    Nothing is computed and nothing is written. All problems of one pass are told together. The exit code is 3 if a raw
+    file cannot be read: a run would leave its recording out.
     """
     from bandcairn.execution.project import check_project
 
     loaded, unreadable = check_project(study)
+    code = SOME_FAILED if unreadable else DONE
     if as_json:
         print_json({"study": loaded.description.model_dump(mode="json"), "unreadable": unreadable})
-        return
+        return code
     people = {row.participant for row in loaded.recordings}
     say(f"# {len(loaded.recordings)} recordings of {len(people)} participants; no problem found")
     say("# every key that stands at its default is marked")
@@ -34,6 +36,7 @@ def check(study: StudyFolder, *, as_json: AsJson = False) -> None:
         say(line)
     for recording, reason in unreadable.items():
         note(f"warning: {recording} cannot be read and would be left out: {reason}")
+    return code
 
 
 def described(model: BaseModel, indent: str = "") -> list[str]:
@@ -67,15 +70,14 @@ def _listed(model: BaseModel, indent: str) -> list[str]:
 
 
 def _scalar(value: Any) -> str:  # noqa: ANN401
+    """Return a value as YAML writes it on one line; 150.0 as 150."""
     import yaml
 
-    plain = (
-        [list(pair) if isinstance(pair, tuple) else pair for pair in value]
-        if isinstance(value, tuple)
-        else value
-    )
+    from bandcairn.nodes.key import canonical_json
+
+    plain = yaml.safe_load(canonical_json(value))
     if isinstance(value, dict):
-        plain = {key: list(item) if isinstance(item, tuple) else item for key, item in value.items()}
+        plain = {key: plain[key] for key in value}
     text: str = yaml.safe_dump(
         plain, default_flow_style=True, allow_unicode=True, width=10_000, sort_keys=False
     )

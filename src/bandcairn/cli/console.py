@@ -21,6 +21,9 @@ if TYPE_CHECKING:
 
     from bandcairn.execution.project import Project
 
+# Exit codes. 1 is kept for "finished, but the answer is no".
+DONE, STUDY_AT_FAULT, SOME_FAILED, FAULT, INTERRUPTED = 0, 2, 3, 70, 130
+
 StudyFolder = Annotated[Path, typer.Argument(metavar="STUDY", help="The folder that holds study.yaml.")]
 AsJson = Annotated[bool, typer.Option("--json", help="Print JSON for a program to read.")]
 Cores = Annotated[

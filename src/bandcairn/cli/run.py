@@ -6,6 +6,9 @@ from time import perf_counter
 from typing import TYPE_CHECKING
 
 from bandcairn.cli.console import (
+    DONE,
+    FAULT,
+    SOME_FAILED,
     AsJson,
     Cores,
     StudyFolder,
@@ -66,8 +69,8 @@ def run_with_progress(project: Project, cores: int, *, quiet: bool) -> RunReport
 def exit_code(report: RunReport) -> int:
     """Return 0 if all is done, 3 if some recordings have failed, 70 if one of them met a fault of bandcairn."""
     if any(failure.fault for failure in report.outcome.failures):
-        return 70
-    return 3 if report.outcome.failures else 0
+        return FAULT
+    return SOME_FAILED if report.outcome.failures else DONE
 
 
 def summary(project: Project, report: RunReport, code: int) -> dict[str, object]:

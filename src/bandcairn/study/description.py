@@ -115,7 +115,7 @@ def _read_description(folder: Path) -> Document:
     try:
         text = (folder / STUDY_FILE).read_text(encoding="utf-8-sig")
     except OSError as error:
-        remedy = "Name the folder that holds study.yaml, or draft one with `bandcairn new`."
+        remedy = "Name the folder that holds study.yaml; `bandcairn demo` writes one to learn from."
         found = error.strerror or "no such file"
         raise StudyError((Problem(STUDY_FILE, "", str(folder), found, "a study folder", remedy),)) from None
     except UnicodeDecodeError as error:
