@@ -46,6 +46,7 @@ def prune(
 
 
 def _leftovers(project: Project) -> tuple[Leftover, ...]:
+    from bandcairn.execution.abandoned import abandoned_files, in_use
     from bandcairn.nodes.plan import plan_study_nodes
     from bandcairn.provenance.hygiene import leftovers
     from bandcairn.store.layout import present_keys
@@ -53,7 +54,8 @@ def _leftovers(project: Project) -> tuple[Leftover, ...]:
     present = present_keys(project.store_folder, project.plan.recording_nodes.values())
     # Where recordings have failed, the tables stand on the others.
     standing = plan_study_nodes(project.study, project.plan.slots, present.__contains__)
-    return leftovers(project.store_folder, (*project.plan.nodes.values(), *standing.values()))
+    stored = leftovers(project.store_folder, (*project.plan.nodes.values(), *standing.values()))
+    return (*(leftover for leftover in stored if not in_use(leftover.path)), *abandoned_files(project))
 
 
 def _agreed(files: int, megabytes: float, *, as_json: bool) -> bool:

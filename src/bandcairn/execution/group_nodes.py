@@ -161,8 +161,8 @@ def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> 
         row
         for row in rows
         if row["feature"] == question["feature"]
-        and row["band"] == question["band"]
-        and question["segment"] in (None, row["segment"])
+        and row["band"] == question.get("band")
+        and question.get("segment", row["segment"]) == row["segment"]
     ]
     channels = question["channel_names"]
     groups = [channels] if question["channels"] == "mean" else [[channel] for channel in channels]
@@ -174,18 +174,18 @@ def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> 
             "signal": question["signal"],
             "channel": "mean" if question["channels"] == "mean" else group[0],
             "feature": question["feature"],
-            "band": question["band"],
+            "band": question.get("band"),
         }
 
 
 def _compared(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]], n_channels: int) -> Result:
     from bandcairn.statistics import Comparison, compare
 
-    factor = question["within"] or question["between"]
+    factor = question.get("within") or question.get("between")
     observations = list(_observations(rows, n_channels, factor))
     first, second = question["contrast"]
     comparison = Comparison(
-        design="within" if question["within"] else "between",
+        design="within" if question.get("within") else "between",
         factor=factor,
         first=first,
         second=second,

@@ -29,10 +29,10 @@ QUALITY_UNITS = {
 
 def load_node(parameters: Mapping[str, Any], path: Path) -> Frame:
     """Read a signal's channels from the raw file."""
-    rate_hz = parameters["rate_hz"]
-    declared = Declared(None if rate_hz is None else exact_rate(rate_hz), parameters["unit"])
-    raw = read(path, tuple(parameters["channels"]), declared, parameters["start_s"], parameters["stop_s"])
-    return raw_to_frame(raw)
+    rate_hz = parameters.get("rate_hz")
+    declared = Declared(None if rate_hz is None else exact_rate(rate_hz), parameters.get("unit"))
+    cut = parameters.get("start_s"), parameters.get("stop_s")
+    return raw_to_frame(read(path, tuple(parameters["channels"]), declared, *cut))
 
 
 def quality_node(_: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:

@@ -56,7 +56,7 @@ def epoch_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> F
     """Lay the windows of every segment and mark those to reject."""
     signal = frame_to_signal(parents["signal"])
     segments = tuple(Segment(*segment) for segment in parameters["segments"])
-    reject = None if parameters["reject"] is None else Reject(**parameters["reject"])
+    reject = Reject(**parameters["reject"]) if "reject" in parameters else None
     epochs = cut_epochs(signal, parameters["length_s"], parameters["overlap"], segments, reject)
     starts: dict[str, float] = {}
     for segment in segments or (Segment("", float(signal.runs[0].start_s), 0),):
@@ -68,7 +68,7 @@ def spectrum_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -
     """Estimate spectra: of EEG averaged over the kept epochs of a segment, of EMG and beats one an epoch."""
     options = {name: value for name, value in parameters.items() if name not in ("kind", "interpolation_hz")}
     if options["method"] == "periodogram":
-        del options["segment_s"], options["overlap"]
+        del options["overlap"]
     if parameters["kind"] == "ecg":
         return _beat_spectra(parents, options, parameters["interpolation_hz"])
     return _eeg_spectra(parents, options) if parameters["kind"] == "eeg" else _emg_spectra(parents, options)
@@ -172,7 +172,7 @@ def _eeg_values(
 
 def _total_hz(parameters: Mapping[str, Any]) -> tuple[float, float]:
     """Return the range of the total power: as declared, or from the lowest to the highest band edge."""
-    if parameters["total_hz"] is not None:
+    if "total_hz" in parameters:
         low_hz, high_hz = parameters["total_hz"]
         return low_hz, high_hz
     edges = list(parameters["bands_hz"].values())

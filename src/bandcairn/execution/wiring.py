@@ -18,8 +18,8 @@ from typing import TYPE_CHECKING, Any
 from bandcairn.errors import EngineError
 from bandcairn.execution.batches import make_batches
 from bandcairn.execution.progress import reporter
-from bandcairn.execution.project import open_project
-from bandcairn.execution.publish import publish, published
+from bandcairn.execution.project import RESULTS_NAME, open_project
+from bandcairn.execution.publish import RUN_FILE, publish, published
 from bandcairn.store.layout import STORE_NAME, make_private_folder
 
 if TYPE_CHECKING:
@@ -30,7 +30,7 @@ if TYPE_CHECKING:
     from bandcairn.nodes.node import Node
 
 # Relative to the study folder, which is the working directory of every job.
-_RECEIPTS = f"{STORE_NAME}/.receipts"
+RECEIPTS = f"{STORE_NAME}/.receipts"
 # Receipts of a run lie apart from those of another that may work on the same study at the same time. The name is
 # handed down to every process of the run.
 RUN_VARIABLE = "BANDCAIRN_RUN"
@@ -69,9 +69,9 @@ class Wiring:
         return Worker(self.project, reporter())
 
     def wanted(self) -> list[str]:
-        """Return the final receipt, or nothing when all nodes and results stand."""
+        """Return the final receipt; when all nodes and results stand, a file of the results, which exists."""
         stands = not self.project.missing() and published(self.project)
-        return [] if stands else [receipt("results", self.project.plan.id)]
+        return [f"{RESULTS_NAME}/{RUN_FILE}" if stands else receipt("results", self.project.plan.id)]
 
     def needed_by(self, step: str) -> Callable[[Any], list[str]]:
         """Return the input function of a step's rule: the receipt of the step before, for the same batch."""
@@ -145,7 +145,7 @@ def run_name() -> str:
 
 def receipts_folder() -> str:
     """Return the folder of this run's receipts, relative to the study."""
-    return f"{_RECEIPTS}/{os.environ[RUN_VARIABLE]}"
+    return f"{RECEIPTS}/{os.environ[RUN_VARIABLE]}"
 
 
 def receipt(step: str, name: str) -> str:
@@ -160,7 +160,7 @@ def log_of(step: str, name: str) -> str:
 
 def clear_receipts(study_folder: Path, run: str = "") -> None:
     """Remove the receipts and logs of a run, this process's if not named, and of runs that were killed long ago."""
-    receipts = study_folder / _RECEIPTS
+    receipts = study_folder / RECEIPTS
     shutil.rmtree(receipts / (run or os.environ[RUN_VARIABLE]), ignore_errors=True)
     with suppress(OSError):  # another run may be clearing too, or its receipts may lie there
         for folder in receipts.iterdir():
