@@ -1,8 +1,9 @@
 """The key of a node: SHA-256 of one canonical JSON document, its recipe.
 
 The document holds the step, its version, its full parameters, its parents' keys by role and the digests of the
-raw content, and the version of this very format. Names of people, files and folders, library versions and
-numbers computed on the way are not in it: the same recipe on the same samples has the same key everywhere.
+raw content, and the version of this very format. Names of files and folders, library versions and numbers computed
+on the way are not in it, names of people and recordings only where rows of a table bear them: the same recipe on the
+same samples has the same key everywhere.
 """
 
 from __future__ import annotations

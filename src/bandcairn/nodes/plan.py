@@ -17,6 +17,8 @@ from bandcairn.nodes.node import Node, make_node
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Mapping
 
+    from pydantic import BaseModel
+
     from bandcairn.nodes.survey import RawContent
     from bandcairn.study.description import LoadedStudy
     from bandcairn.study.models import EcgSignal, EegSignal, EmgSignal, Question
@@ -125,6 +127,14 @@ def families(study: LoadedStudy) -> dict[str, tuple[Question, ...]]:
     return grouped
 
 
+def _recipe(block: BaseModel, exclude: set[str] | None = None) -> dict[str, Any]:
+    """Return a block of the description as it enters a recipe.
+
+    What is absent stays out: an option that a later version adds, absent by default, leaves every key as it was.
+    """
+    return block.model_dump(mode="json", exclude_none=True, exclude=exclude)
+
+
 def design_columns(study: LoadedStudy) -> tuple[str, ...]:
     """Return the design columns of the recordings table, in their order."""
     return tuple(study.recordings[0].design)
@@ -138,9 +148,9 @@ class _SignalChain:
         self.signal = signal
         self.channels = signal.channels
         self.declared = signal.load or study.description.load
-        self.filter = canonical_json({"stages": [stage.model_dump(mode="json") for stage in signal.filter]})
-        self.spectrum = canonical_json({"kind": signal.kind, **signal.spectrum.model_dump(mode="json")})
-        self.features = canonical_json({"kind": signal.kind, **signal.features.model_dump(mode="json")})
+        self.filter = canonical_json({"stages": [_recipe(stage) for stage in signal.filter]})
+        self.spectrum = canonical_json({"kind": signal.kind, **_recipe(signal.spectrum)})
+        self.features = canonical_json({"kind": signal.kind, **_recipe(signal.features)})
         self.load_parameters = cache(self._load_parameters)
         self.epoch_parameters = cache(self._epoch_parameters)
         self.segments = _segments_by_recording(study)
@@ -211,18 +221,12 @@ class _SignalChain:
     def _load_parameters(
         self, rate_hz: float | None, unit: str | None, start_s: float | None, stop_s: float | None
     ) -> str:
-        return canonical_json(
-            {
-                "channels": self.channels,
-                "rate_hz": rate_hz,
-                "unit": unit,
-                "start_s": start_s,
-                "stop_s": stop_s,
-            }
-        )
+        stated = {"rate_hz": rate_hz, "unit": unit, "start_s": start_s, "stop_s": stop_s}
+        known = {name: value for name, value in stated.items() if value is not None}
+        return canonical_json({"channels": self.channels, **known})
 
     def _epoch_parameters(self, segments: tuple[tuple[str, float, float], ...]) -> str:
-        return canonical_json({**self.signal.epoch.model_dump(mode="json"), "segments": segments})
+        return canonical_json({**_recipe(self.signal.epoch), "segments": segments})
 
 
 def _exact(rate_hz: Fraction | float | None) -> Fraction:
@@ -255,7 +259,7 @@ def _signal_nodes(
             rows.append({"recording": row.recording, "participant": row.participant, "design": row.design})
             for step, key in found.items():
                 keys[step].append((f"{step}/{row.recording}", key))
-    limits = signal.quality.model_dump(mode="json", exclude={"on_failure"})
+    limits = _recipe(signal.quality, exclude={"on_failure"})
     verdict = make_node(
         "verdict",
         parameters=canonical_json({"signal": name, "limits": limits}),
@@ -292,4 +296,4 @@ def _statistics_node(
 def _question(question: Question, channels: tuple[str, ...]) -> dict[str, Any]:
     """Return a question with the names of its channels written out."""
     named = channels if isinstance(question.channels, str) else question.channels
-    return {**question.model_dump(mode="json", exclude={"family"}), "channel_names": named}
+    return {**_recipe(question, exclude={"family"}), "channel_names": named}

@@ -1,7 +1,7 @@
 """The models of study.yaml: frozen, unknown keys refused, every default written out.
 
 Each key carries its meaning, unit and range; ``config/README.md`` prints them and a test compares the two.
-``model_dump(mode="json")`` of a block is the complete, default-expanded description of its step.
+``model_dump(mode="json", exclude_none=True)`` of a block is the complete, default-expanded description of its step.
 """
 
 from __future__ import annotations
