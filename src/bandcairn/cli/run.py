@@ -91,7 +91,7 @@ def summary(project: Project, report: RunReport, code: int) -> dict[str, object]
 def tell(project: Project, report: RunReport, seconds: float) -> None:
     """Say what a run has done."""
     nodes = len(project.plan.nodes)
-    if report.computed:
+    if report.computed or report.outcome.failures:
         say(f"computed {report.computed} of {nodes} nodes in {duration(seconds)}")
     else:
         results = "; results written anew" if report.rewritten else ""
@@ -99,7 +99,7 @@ def tell(project: Project, report: RunReport, seconds: float) -> None:
     failures = report.outcome.failures
     for failure in failures:
         place = " ".join(filter(None, (failure.recording, failure.signal)))
-        note(f"failed: {place}: {failure.step}: {failure.reason}")
+        note(f"failed: {place}: {failure.sentence}")
     if failures:
         note(f"{report.outcome.failed_sentence}; the rest is done, with the true n in every row")
     say(f"results: {project.results_folder}")

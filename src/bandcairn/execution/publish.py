@@ -112,7 +112,8 @@ def publish(
     from bandcairn.provenance.ledger import LEDGER_SCHEMA
     from bandcairn.store.tables import write_table
 
-    failures = (*_unreadable(project), *_at_every_place(project, failures))
+    told = (*_unreadable(project), *_at_every_place(project, failures))
+    failures = sorted(told, key=lambda failure: (failure.recording, failure.signal))
     frames = {node.key: _rows(store, node) for node in study_nodes}
     features = _features(
         project,
@@ -218,9 +219,7 @@ def _exclusions(
     """Yield all that was left out: recordings that failed, channels beyond a limit, rejected epochs."""
     for failure in failures:
         what = "recording" if not failure.signal else "signal"
-        yield _left_out(
-            (failure.recording, failure.signal), what, (1, 1), f"{failure.step}: {failure.reason}"
-        )
+        yield _left_out((failure.recording, failure.signal), what, (1, 1), failure.sentence)
     for row in verdicts:
         if row["passed"] == "no":
             signal = project.study.description.signals[row["signal"]]

@@ -45,6 +45,11 @@ class Failure:
     reason: str
     fault: str = ""
 
+    @property
+    def sentence(self) -> str:
+        """The step and why it failed, for a user."""
+        return f"{self.step}: {self.reason.removeprefix(f'{self.step}: ')}"
+
 
 class _ParentFailedError(RecordingError):
     """A node above has failed; its own failure is the one to tell."""
