@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import asdict
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
@@ -181,11 +181,12 @@ def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> 
 def _compared(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]], n_channels: int) -> Result:
     from bandcairn.statistics import Comparison, compare
 
-    factor = question.get("within") or question.get("between")
+    design: Literal["within", "between"] = "within" if "within" in question else "between"
+    factor: str = question[design]
     observations = list(_observations(rows, n_channels, factor))
     first, second = question["contrast"]
     comparison = Comparison(
-        design="within" if question.get("within") else "between",
+        design=design,
         factor=factor,
         first=first,
         second=second,
