@@ -123,6 +123,7 @@ def finished_study(tmp_path_factory: pytest.TempPathFactory) -> Path:
     records = {record["key"]: record for record in done.records}
     publish(project, worker.plan_study_nodes(), worker.store, records, done.failures)
     assert done.failures == []
+    open_project(folder)  # by now the files are old enough for the memory of raw files to trust their times
     return folder
 
 
