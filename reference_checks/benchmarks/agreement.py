@@ -1,0 +1,115 @@
+"""Values that both sides define alike, held side by side: they show that equal work was done."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import pandas as pd
+
+if TYPE_CHECKING:
+    from pathlib import Path
+
+
+@dataclass(frozen=True, slots=True)
+class _Common:
+    """A value of one recording on both sides.
+
+    Attributes
+    ----------
+    column : str
+        In the script's table.
+    signal, channel, feature, band : str
+        In bandcairn's; an empty band for none.
+    allowed : float
+        Largest relative difference.
+    why : str
+        Where a difference comes from.
+    """
+
+    column: str
+    signal: str
+    channel: str
+    feature: str
+    band: str
+    allowed: float
+    why: str
+
+
+_EDGES = "ends of the recording are padded otherwise"
+_COMMON = (
+    *(
+        _Common(f"{name}_alpha_abs", "eeg", f"EEG {name}", "band_power", "alpha", 0.01, _EDGES)
+        for name in ("Fz", "Cz", "Pz", "Oz")
+    ),
+    _Common("n_beats", "heart", "ECG", "beats", "", 0.005, "other detector; a beat at an end may be missed"),
+    _Common("hr_mean", "heart", "ECG", "heart_rate", "", 0.005, "mean of epochs against whole recording"),
+    _Common("mnf_mean", "muscle", "EMG", "mean_frequency", "", 0.01, "another anti-alias filter"),
+    _Common(
+        "mdf_mean", "muscle", "EMG", "median_frequency", "", 0.015, "script takes the next whole bin of 1 Hz"
+    ),
+    _Common("rms_mean", "muscle", "EMG", "rms", "", 0.01, "root of the mean square against mean of roots"),
+)
+# The script gives the RMS of EMG in millivolt.
+_SCALE = {"rms_mean": 1000.0}
+
+
+@dataclass(frozen=True, slots=True)
+class Agreement:
+    """How far one value differs between the sides.
+
+    Attributes
+    ----------
+    value : str
+        Its name.
+    largest : float
+        Largest relative difference over the recordings.
+    allowed : float
+        What it may be.
+    why : str
+        Where it comes from.
+    """
+
+    value: str
+    largest: float
+    allowed: float
+    why: str
+
+    @property
+    def holds(self) -> bool:
+        """Whether the difference is within what is allowed."""
+        return self.largest <= self.allowed
+
+
+def agreements(study: Path, script: Path) -> list[Agreement]:
+    """Compare the values of all recordings.
+
+    Parameters
+    ----------
+    study : Path
+        Study folder with bandcairn's results.
+    script : Path
+        Output folder of the script.
+    """
+    ours = pd.read_parquet(study / "results" / "features.parquet")
+    theirs = pd.read_parquet(script / "features.parquet").set_index("recording")
+    return [_compared(common, ours, theirs) for common in _COMMON]
+
+
+def _compared(common: _Common, ours: pd.DataFrame, theirs: pd.DataFrame) -> Agreement:
+    here = ours[
+        (ours["signal"] == common.signal)
+        & (ours["channel"] == common.channel)
+        & (ours["feature"] == common.feature)
+        & (ours["band"].fillna("") == common.band)
+    ].set_index("recording")["value"]
+    there = theirs[common.column] * _SCALE.get(common.column, 1.0)
+    difference = (here - there.reindex(here.index)).abs() / there.abs()
+    # A value that one side lacks is no agreement.
+    largest = float("inf") if difference.isna().any() else float(difference.max())
+    return Agreement(
+        f"{common.feature} {common.band} {common.channel}".replace("  ", " "),
+        largest,
+        common.allowed,
+        common.why,
+    )
