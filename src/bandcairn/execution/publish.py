@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.errors import DamagedNodeError
+from bandcairn.execution.failure import Failure
 from bandcairn.nodes.plan import design_columns
 
 if TYPE_CHECKING:
@@ -15,7 +16,6 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from bandcairn.execution.project import Project
-    from bandcairn.execution.worker import Failure
     from bandcairn.nodes.node import Node
     from bandcairn.store.store import Store
 
@@ -47,8 +47,6 @@ class Outcome:
     @classmethod
     def of_run(cls, run: Mapping[str, Any]) -> Outcome:
         """Return the outcome that a run has written down."""
-        from bandcairn.execution.worker import Failure
-
         return cls(tuple(Failure(**failure) for failure in run["failures"]))
 
     @property
@@ -193,8 +191,6 @@ def _with_truth(row: Mapping[str, Any]) -> dict[str, Any]:
 
 def _unreadable(project: Project) -> list[Failure]:
     """Return the recordings whose raw file cannot be read: they have no node that could fail."""
-    from bandcairn.execution.worker import Failure
-
     return [Failure(name, "", "load", reason) for name, reason in sorted(project.survey.unreadable.items())]
 
 

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 
 from bandcairn.errors import DamagedNodeError, RecordingError
 from bandcairn.execution.compute import compute
+from bandcairn.execution.failure import Failure
 from bandcairn.nodes.plan import plan_study_nodes
 from bandcairn.provenance.record import make_record, now
 from bandcairn.store.layout import present_keys
@@ -23,32 +24,6 @@ if TYPE_CHECKING:
     from bandcairn.execution.project import Project
     from bandcairn.nodes.node import Node
     from bandcairn.store.frame import Frame
-
-
-@dataclass(frozen=True, slots=True)
-class Failure:
-    """A node that could not be computed.
-
-    Attributes
-    ----------
-    recording, signal, step : str
-        Where.
-    reason : str
-        Why, for a user.
-    fault : str
-        Empty, or the traceback of a fault of bandcairn itself.
-    """
-
-    recording: str
-    signal: str
-    step: str
-    reason: str
-    fault: str = ""
-
-    @property
-    def sentence(self) -> str:
-        """The step and why it failed, for a user."""
-        return f"{self.step}: {self.reason.removeprefix(f'{self.step}: ')}"
 
 
 class _ParentFailedError(RecordingError):
