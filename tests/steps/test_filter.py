@@ -10,11 +10,20 @@ import pytest
 
 from bandcairn.errors import StepError
 from bandcairn.signal import Run, Signal
-from bandcairn.steps import filter as filter_module
-from bandcairn.steps.filter import FilterStage, apply_stages, effective_cutoffs, response, sections
+from bandcairn.steps import filter_design
+from bandcairn.steps.filter import (
+    FilterStage,
+    apply_stages,
+    effective_cutoffs,
+    response,
+    sections,
+    short_runs,
+)
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
+
+    from bandcairn.steps.filter import Phase
 
 LOW = FilterStage(type="lowpass", cutoff_hz=(30.0,), order=4)
 HIGH = FilterStage(type="highpass", cutoff_hz=(1.0,), order=2)
@@ -84,7 +93,7 @@ def test_a_stage_after_a_change_of_phase_runs_on_its_own() -> None:
 
 
 @pytest.mark.parametrize("phase", ["zero", "causal"])
-def test_offset_does_not_ring(phase: filter_module.Phase) -> None:
+def test_offset_does_not_ring(phase: Phase) -> None:
     """A constant passes a low-pass unchanged and a high-pass not at all, from the first sample on."""
     signal = signal_of(np.full((1, 5000), 1e4))
     low = FilterStage(type="lowpass", cutoff_hz=(30.0,), order=4, phase=phase)
@@ -124,12 +133,27 @@ def test_run_no_longer_than_the_filter_settles_is_refused_with_both_lengths() ->
     assert apply_stages(signal_of(noise(1, 959)), (slow,)).samples.shape == (1, 959)
 
 
-def test_one_short_run_among_long_ones_is_refused() -> None:
-    """Every run is judged."""
-    runs = (Run(0, 3000, Fraction(0)), Run(3000, 3100, Fraction(60)))
+def test_one_short_run_among_long_ones_is_left_out_and_listed() -> None:
+    """A gap costs what lies too close to it, not the recording; the runs that stay keep their times."""
+    samples = noise(1, 6100)
+    runs = (Run(0, 3000, Fraction(0)), Run(3000, 3100, Fraction(60)), Run(3100, 6100, Fraction(90)))
+    signal = signal_of(samples, runs)
 
-    with pytest.raises(StepError, match=r"gap-free run of 0\.400 s"):
-        apply_stages(signal_of(noise(1, 3100), runs), (HIGH,))
+    filtered = apply_stages(signal, (HIGH,))
+
+    assert filtered.runs == (Run(0, 3000, Fraction(0)), Run(3000, 6000, Fraction(90)))
+    (short,) = short_runs(signal, (HIGH,))
+    assert (short.run, short.length_s) == (runs[1], 0.4)
+    alone = apply_stages(signal_of(samples[:, 3100:].copy()), (HIGH,))
+    np.testing.assert_array_equal(filtered.samples[:, 3000:], alone.samples)
+
+
+def test_runs_that_are_all_too_short_are_refused_with_the_longest() -> None:
+    """Where nothing can be filtered, the recording is refused by name."""
+    runs = (Run(0, 100, Fraction(0)), Run(100, 150, Fraction(60)))
+
+    with pytest.raises(StepError, match=r"2 gap-free runs, the longest of 0\.400 s"):
+        apply_stages(signal_of(noise(1, 150), runs), (HIGH,))
 
 
 @pytest.mark.parametrize("bad", [np.nan, np.inf])
@@ -160,8 +184,8 @@ def test_pole_at_zero_settles_at_once() -> None:
         (FilterStage(type="lowpass", cutoff_hz=(8.0,), order=0), "an order of at least 1"),
         (FilterStage(type="lowpass", cutoff_hz=(float("nan"),), order=2), "cut-offs above 0"),
         (
-            FilterStage(type="lowpass", cutoff_hz=(8.0,), order=2, design="fir"),  # type: ignore[arg-type]
-            "design 'fir', which is not available yet",
+            FilterStage(type="lowpass", cutoff_hz=(8.0,), order=2, design="gauss"),  # type: ignore[arg-type]
+            "found design 'gauss'; allowed: butterworth, ",
         ),
     ],
 )
@@ -173,7 +197,7 @@ def test_impossible_stage_is_refused(stage: FilterStage, message: str) -> None:
 
 def test_unstable_pole_is_refused(monkeypatch: pytest.MonkeyPatch) -> None:
     """Whatever a design routine returns, a pole on or outside the unit circle goes no further."""
-    monkeypatch.setattr(filter_module, "_slowest_radius", lambda _sos: 1.0)
+    monkeypatch.setattr(filter_design, "largest_radius", lambda _sos: 1.0)
 
     with pytest.raises(StepError, match="pole at radius 1 at 250 Hz and is unstable"):
         sections(LOW, 250.0)
