@@ -27,7 +27,7 @@ LAYERS = (
     ("provenance",),
     ("execution",),
     ("report",),
-    ("demo", "api"),
+    ("demo", "drafting", "api"),
     ("cli",),
 )
 LEVEL = {name: level for level, layer in enumerate(LAYERS) for name in layer}
@@ -104,7 +104,7 @@ def against_direction(found: Import) -> bool:
     imported = below[0] if below else "__init__"
     if imported == found.part:
         return False
-    if imported not in LEVEL:
+    if {imported, found.part} - LEVEL.keys():
         return True  # the package itself, or a part that has no place in the list
     return LEVEL[imported] >= LEVEL[found.part]
 
