@@ -210,7 +210,7 @@ def test_the_top_of_the_repository_holds_what_it_should() -> None:
     """Whoever opens it finds a handful of names, each of which explains itself."""
     top = {name.split("/")[0] for name in tracked_files()}
     assert sorted(name for name in top if not name.startswith(".") and name not in TOP_LEVEL) == []
-    assert sorted(TOP_LEVEL - top - {"DEVELOPERS.md"}) == []
+    assert sorted(TOP_LEVEL - top) == []
 
 
 def test_no_file_names_a_path_of_a_machine() -> None:
