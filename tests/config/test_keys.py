@@ -11,9 +11,14 @@ import pytest
 from pydantic import BaseModel
 
 from bandcairn.study import models
+from bandcairn.study.blocks import Block
 from bandcairn.study.description import load_study
+from bandcairn.study.filter_blocks import FilterStage
+from bandcairn.study.reference_blocks import BipolarPairs
 
 if TYPE_CHECKING:
+    from collections.abc import Iterator
+
     from pydantic.fields import FieldInfo
 
 CONFIG = Path(__file__).parents[2] / "config"
@@ -28,7 +33,8 @@ SECTIONS: dict[str, type[BaseModel]] = {
     "A signal of kind emg": models.EmgSignal,
     "quality": models.QualityLimits,
     "resample": models.Resample,
-    "filter, each stage": models.FilterStage,
+    "reference, as pairs": BipolarPairs,
+    "filter, each stage": FilterStage,
     "epoch": models.Epoch,
     "epoch.reject": models.Reject,
     "spectrum of eeg and emg": models._Spectrum,
@@ -37,7 +43,7 @@ SECTIONS: dict[str, type[BaseModel]] = {
     "features of ecg": models.EcgFeatures,
     "A question": models.Question,
 }
-WITHOUT_KEYS_OF_THEIR_OWN = {models.Block, models.EegSpectrum, models.EmgSpectrum, models.EmgFeatures}
+WITHOUT_KEYS_OF_THEIR_OWN = {Block, models.EegSpectrum, models.EmgSpectrum, models.EmgFeatures}
 
 
 def own_fields(model: type[BaseModel]) -> dict[str, FieldInfo]:
@@ -85,9 +91,15 @@ def test_every_key_of_a_block_stands_in_its_table_with_meaning_unit_range_and_de
 
 def test_every_model_has_a_section() -> None:
     """A block that is added to the models must be added to the table of keys."""
-    blocks = {m for m in vars(models).values() if isinstance(m, type) and issubclass(m, models.Block)}
+    blocks = set(_subclasses(Block)) | {Block}
 
     assert blocks - WITHOUT_KEYS_OF_THEIR_OWN == set(SECTIONS.values())
+
+
+def _subclasses(block: type[BaseModel]) -> Iterator[type[BaseModel]]:
+    for below in block.__subclasses__():
+        yield below
+        yield from _subclasses(below)
 
 
 def test_the_table_has_no_section_that_no_model_stands_behind() -> None:

@@ -11,7 +11,8 @@ from pydantic import ValidationError
 
 from bandcairn.study.catalogue import FEATURES, find_feature
 from bandcairn.study.description import load_study
-from bandcairn.study.models import EegSpectrum, Epoch, FilterStage, Load, StudyDescription
+from bandcairn.study.filter_blocks import FilterStage
+from bandcairn.study.models import EegSpectrum, Epoch, Load, StudyDescription
 
 if TYPE_CHECKING:
     from pathlib import Path

@@ -95,7 +95,9 @@ def load_study(folder: Path) -> LoadedStudy:
     tables = _Tables.read(folder, content)
     understood = understand(content)
     readable = bool(tables.segments.cells) or not tables.segments.problems
-    findings = _inconsistencies(understood, tables.design(content), segments_readable=readable)
+    mains_hz = content.get("mains_hz") if content.get("mains_hz") in (50, 60) else None
+    design = tables.design(content)
+    findings = _inconsistencies(understood, design, mains_hz, segments_readable=readable)
     problems = (
         *document.problems,
         *(fault.placed(document.lines) for fault in (*understood.faults, *tables.faults)),
@@ -218,11 +220,11 @@ def _placed(findings: Iterator[Fault | Problem], document: Document) -> Iterator
 
 
 def _inconsistencies(
-    understood: Understood, design: Design, *, segments_readable: bool
+    understood: Understood, design: Design, mains_hz: float | None, *, segments_readable: bool
 ) -> Iterator[Fault | Problem]:
     """Yield what does not fit between signals, questions and tables."""
     for name, signal in understood.signals.items():
-        yield from check_signal(name, signal)
+        yield from check_signal(name, signal, mains_hz)
         if segments_readable:
             yield from check_segment_names(name, signal, design.segments)
     yield from check_names_unique(understood.questions)

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 
 from bandcairn.errors import Problem, UnknownUnitError
 from bandcairn.study.faults import STUDY_FILE, Fault, listed, suggestion
+from bandcairn.study.filter_checks import reach_s
 from bandcairn.study.models import AnnotationSegments
 from bandcairn.study.signal_checks import check_nyquist
 from bandcairn.units import KNOWN_UNITS, microvolts_per
@@ -100,6 +101,7 @@ def _check_case(case: _Case) -> Iterator[Problem]:
     yield from _check_rates(case)
     yield from _check_units(case)
     yield from _check_epoch(case)
+    yield from _check_fir_length(case)
 
 
 def _check_channels(case: _Case) -> Iterator[Problem]:
@@ -149,7 +151,8 @@ def _check_rate(case: _Case, rate_hz: float) -> Iterator[Problem]:
     """Yield what the one rate of a signal does not allow."""
     resample = case.signal.resample
     if resample is None:
-        for fault in check_nyquist(case.name, case.signal, rate_hz, f"of the file, {rate_hz:g} Hz"):
+        mains_hz, origin = case.study.description.mains_hz, f"of the file, {rate_hz:g} Hz"
+        for fault in check_nyquist(case.name, case.signal, rate_hz, origin, mains_hz):
             told = {"found": fault.found, "allowed": fault.allowed, "remedy": fault.remedy}
             yield case.refuse(*fault.path[2:], **told)
     elif resample.rate_hz > rate_hz * (1 + _SAME):
@@ -229,10 +232,31 @@ def _check_epoch(case: _Case) -> Iterator[Problem]:
         yield case.refuse("epoch", "length_s", found=f"{length_s:g} s", allowed=allowed, remedy=remedy)
 
 
-def _stretches_s(case: _Case) -> list[float]:
-    """Return the lengths of the stretches that a signal uses; empty where the rate is unknown."""
+def _check_fir_length(case: _Case) -> Iterator[Problem]:
+    """Refuse a zero-phase fir whose taps reach further to either side than the recording is long."""
+    length_s = _used_s(case)
+    for index, stage in enumerate(case.signal.filter):
+        needed_s = reach_s(stage) if stage.phase == "zero" else 0.0
+        if length_s is not None and needed_s >= length_s:
+            found = f"{stage.transition_hz:g} Hz, for which the taps reach {needed_s:g} s to either side"
+            allowed = f"less than the {length_s:g} s of this recording"
+            remedy = "Widen the transition, or leave the recording out."
+            yield case.refuse("filter", index, "transition_hz", found=found, allowed=allowed, remedy=remedy)
+
+
+def _used_s(case: _Case) -> float | None:
+    """Return the length of what is used of a recording; None where the rate is unknown."""
     durations = [c.n_samples / rate for c in case.channels() if (rate := case.rate_hz(c))]
     if not durations:
+        return None
+    stop_s = min(*durations, math.inf if case.row.stop_s is None else case.row.stop_s)
+    return stop_s - (case.row.start_s or 0.0)
+
+
+def _stretches_s(case: _Case) -> list[float]:
+    """Return the lengths of the stretches that a signal uses; empty where the rate is unknown."""
+    whole_s = _used_s(case)
+    if whole_s is None:
         return []
     segments = _segments(case)
     used = {
@@ -242,8 +266,7 @@ def _stretches_s(case: _Case) -> list[float]:
     }
     if segments and case.signal.segments != ():
         return [stop_s - start_s for start_s, stop_s in used.values()]
-    stop_s = min(*durations, math.inf if case.row.stop_s is None else case.row.stop_s)
-    return [stop_s - (case.row.start_s or 0.0)]
+    return [whole_s]
 
 
 def _segments(case: _Case) -> list[tuple[str, float, float]]:

@@ -8,55 +8,29 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field, model_validator
-from pydantic_core import PydanticCustomError
+from pydantic import AfterValidator, Field, model_validator
 
+from bandcairn.study.blocks import (
+    Band,
+    Block,
+    Name,
+    Names,
+    Number,
+    Overlap,
+    Positive,
+    refusal,
+    told,
+)
+from bandcairn.study.filter_blocks import FilterStage  # noqa: TC001 - pydantic reads it to build the model
+from bandcairn.study.quality_blocks import EcgQuality, EegQuality, EmgQuality, QualityLimits, Recorder
+from bandcairn.study.reference_blocks import Reference, referenced_channels
 from bandcairn.units import KNOWN_UNITS
 
 # Contract names that no step computes yet: they are refused by name rather than as a misspelling.
 NOT_YET_AVAILABLE = {
-    "design": ("chebyshev1", "chebyshev2", "elliptic", "bessel", "fir"),
     "method": ("multitaper", "lomb_scargle"),
     "test": ("wilcoxon", "mann_whitney", "permutation", "rm_anova", "anova", "mixed_model", "regression"),
 }
-
-
-def refusal(field: str, found: str, allowed: str, remedy: str) -> PydanticCustomError:
-    """Return a validation error that carries what a `bandcairn.errors.Problem` needs.
-
-    Parameters
-    ----------
-    field : str
-        Key at fault below the block that is validated; empty for the block itself.
-    found, allowed, remedy : str
-        As in `bandcairn.errors.Problem`.
-
-    Returns
-    -------
-    PydanticCustomError
-        To be raised inside a validator.
-    """
-    context = {"field": field, "found": found, "allowed": allowed, "remedy": remedy}
-    return PydanticCustomError("refused", "found {found}; allowed: {allowed}. {remedy}", context)
-
-
-def _told(unit: str, allowed: str) -> dict[str, Any]:
-    """Return unit and range of a key, for the table of keys and for error messages."""
-    return {"unit": unit, "allowed": allowed}
-
-
-def _increasing(band: tuple[float, float]) -> tuple[float, float]:
-    if band[0] >= band[1]:
-        found = f"[{band[0]:g}, {band[1]:g}]"
-        raise refusal("", found, "two increasing values", "Write the lower value first.")
-    return band
-
-
-def _unique(names: tuple[str, ...]) -> tuple[str, ...]:
-    twice = sorted({name for name in names if names.count(name) > 1})
-    if twice:
-        raise refusal("", f"{', '.join(twice)} more than once", "each name once", "Delete the repetition.")
-    return names
 
 
 def _known_unit(unit: str) -> str:
@@ -66,26 +40,10 @@ def _known_unit(unit: str) -> str:
     return unit.strip()
 
 
-# Numbers are strict: neither "4" in quotes nor true passes as a number.
-Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
-Positive = Annotated[Number, Field(gt=0)]
-NotNegative = Annotated[Number, Field(ge=0)]
-Share = Annotated[Number, Field(ge=0, le=1)]
-Overlap = Annotated[Number, Field(ge=0, lt=1)]
-Name = Annotated[str, Field(min_length=1)]
-Names = Annotated[tuple[Name, ...], AfterValidator(_unique)]
-Band = Annotated[tuple[NotNegative, NotNegative], AfterValidator(_increasing)]
 Window = Literal["hann", "hamming", "blackman", "boxcar"]
 
 _WINDOWS = "hann, hamming, blackman or boxcar"
-_SHARE = "0 to 1"
 _BAND = "two increasing values, the lower one 0 or above"
-
-
-class Block(BaseModel):
-    """Base of all blocks: frozen, unknown keys refused."""
-
-    model_config = ConfigDict(frozen=True, extra="forbid")
 
 
 class Load(Block):
@@ -94,32 +52,12 @@ class Load(Block):
     rate_hz: Positive | None = Field(
         default=None,
         description="Sampling rate of delimited files that have no time_s column.",
-        json_schema_extra=_told("Hz", "above 0"),
+        json_schema_extra=told("Hz", "above 0"),
     )
     unit: Annotated[str, AfterValidator(_known_unit)] | None = Field(
         default=None,
         description="Unit of the numbers in delimited files.",
-        json_schema_extra=_told("", f"one of {', '.join(KNOWN_UNITS)}"),
-    )
-
-
-class QualityLimits(Block):
-    """How much of a channel may be unusable before it is left out."""
-
-    clipped_share: Share = Field(
-        default=0.01,
-        description="Largest share of a channel's samples that may sit at the limit of its range.",
-        json_schema_extra=_told("share", _SHARE),
-    )
-    flat_share: Share = Field(
-        default=0.05,
-        description="Largest share of a channel's samples that may lie in flat stretches.",
-        json_schema_extra=_told("share", _SHARE),
-    )
-    on_failure: Literal["exclude", "flag"] = Field(
-        default="exclude",
-        description="What happens to a channel beyond a limit: left out, or kept with a note.",
-        json_schema_extra=_told("", "exclude or flag"),
+        json_schema_extra=told("", f"one of {', '.join(KNOWN_UNITS)}"),
     )
 
 
@@ -128,45 +66,8 @@ class Resample(Block):
 
     rate_hz: Positive = Field(
         description="New sampling rate; never above that of the file.",
-        json_schema_extra=_told("Hz", "above 0, at most the rate of the file"),
+        json_schema_extra=told("Hz", "above 0, at most the rate of the file"),
     )
-
-
-class FilterStage(Block):
-    """One filter; the stages of a signal are applied in the order in which they stand."""
-
-    type: Literal["lowpass", "highpass", "bandpass", "bandstop"] = Field(
-        description="What passes: below, above, between or outside the cut-offs.",
-        json_schema_extra=_told("", "lowpass, highpass, bandpass or bandstop"),
-    )
-    cutoff_hz: Positive | tuple[Positive, Positive] = Field(
-        description="Cut-off of a lowpass or highpass; lower and upper cut-off of a bandpass or bandstop.",
-        json_schema_extra=_told("Hz", "one value, or two increasing values, above 0 and below half the rate"),
-    )
-    design: Literal["butterworth"] = Field(
-        description="Family of the filter.", json_schema_extra=_told("", "butterworth")
-    )
-    order: Annotated[int, Field(strict=True, ge=1, le=12)] = Field(
-        description="Order of the design, before a zero-phase filter runs it a second time, backward.",
-        json_schema_extra=_told("", "whole number 1 to 12"),
-    )
-    phase: Literal["zero", "causal"] = Field(
-        default="zero",
-        description="zero: forward and backward, no delay; causal: forward only.",
-        json_schema_extra=_told("", "zero or causal"),
-    )
-
-    @model_validator(mode="after")
-    def _cutoffs_fit_the_type(self) -> FilterStage:
-        pair_wanted = self.type in ("bandpass", "bandstop")
-        if pair_wanted != isinstance(self.cutoff_hz, tuple):
-            allowed = "two values, lower and upper" if pair_wanted else "one value"
-            found = "two values" if isinstance(self.cutoff_hz, tuple) else "one value"
-            raise refusal("cutoff_hz", found, f"{allowed} for {self.type}", "Change type or cutoff_hz.")
-        if isinstance(self.cutoff_hz, tuple) and self.cutoff_hz[0] >= self.cutoff_hz[1]:
-            found = f"[{self.cutoff_hz[0]:g}, {self.cutoff_hz[1]:g}]"
-            raise refusal("cutoff_hz", found, "two increasing values", "Write the lower value first.")
-        return self
 
 
 class Reject(Block):
@@ -175,17 +76,17 @@ class Reject(Block):
     peak_to_peak_uv: Positive | None = Field(
         default=None,
         description="An epoch whose highest and lowest sample differ by more is dropped.",
-        json_schema_extra=_told("uV", "above 0"),
+        json_schema_extra=told("uV", "above 0"),
     )
     flat_uv: Positive | None = Field(
         default=None,
         description="An epoch whose highest and lowest sample differ by less is dropped.",
-        json_schema_extra=_told("uV", "above 0"),
+        json_schema_extra=told("uV", "above 0"),
     )
     scope: Literal["channel", "epoch"] = Field(
         default="channel",
         description="Dropped for the channel that fails, or for all channels of the signal.",
-        json_schema_extra=_told("", "channel or epoch"),
+        json_schema_extra=told("", "channel or epoch"),
     )
 
     @model_validator(mode="after")
@@ -205,17 +106,17 @@ class Epoch(Block):
 
     length_s: Positive = Field(
         description="Length of an epoch.",
-        json_schema_extra=_told("s", "above 0, at most the shortest stretch"),
+        json_schema_extra=told("s", "above 0, at most the shortest stretch"),
     )
     overlap: Overlap = Field(
         default=0.0,
         description="Share of an epoch that it has in common with the next.",
-        json_schema_extra=_told("share", "0 or above, below 1"),
+        json_schema_extra=told("share", "0 or above, below 1"),
     )
     reject: Reject | None = Field(
         default=None,
         description="When an epoch is dropped; absent: never.",
-        json_schema_extra=_told("", "a block of limits"),
+        json_schema_extra=told("", "a block of limits"),
     )
 
 
@@ -224,27 +125,27 @@ class _Spectrum(Block):
 
     method: Literal["periodogram", "welch"] = Field(
         description="periodogram: the whole epoch at once; welch: mean over shorter segments of the epoch.",
-        json_schema_extra=_told("", "periodogram or welch"),
+        json_schema_extra=told("", "periodogram or welch"),
     )
     window: Window = Field(
         default="hann",
         description="Taper of the epoch or of each segment.",
-        json_schema_extra=_told("", _WINDOWS),
+        json_schema_extra=told("", _WINDOWS),
     )
     segment_s: Positive | None = Field(
         default=None,
         description="Length of a welch segment; its inverse is the frequency resolution.",
-        json_schema_extra=_told("s", "above 0, at most the epoch; welch only, which requires it"),
+        json_schema_extra=told("s", "above 0, at most the epoch; welch only, which requires it"),
     )
     overlap: Overlap = Field(
         default=0.5,
         description="Share of a welch segment that it has in common with the next; 0 for a periodogram.",
-        json_schema_extra=_told("share", "0 or above, below 1; welch only"),
+        json_schema_extra=told("share", "0 or above, below 1; welch only"),
     )
     detrend: Literal["none", "constant"] = Field(
         default="constant",
         description="What is subtracted from each segment first: nothing, or its mean.",
-        json_schema_extra=_told("", "none or constant"),
+        json_schema_extra=told("", "none or constant"),
     )
 
     @model_validator(mode="before")
@@ -280,29 +181,29 @@ class EcgSpectrum(Block):
 
     method: Literal["welch"] = Field(
         description="welch: mean over segments of the evenly interpolated intervals.",
-        json_schema_extra=_told("", "welch"),
+        json_schema_extra=told("", "welch"),
     )
     interpolation_hz: Positive = Field(
         default=4.0,
         description="Rate at which the intervals are interpolated.",
-        json_schema_extra=_told("Hz", "above 0, at least twice the highest band edge"),
+        json_schema_extra=told("Hz", "above 0, at least twice the highest band edge"),
     )
     window: Window = Field(
-        default="hann", description="Taper of each segment.", json_schema_extra=_told("", _WINDOWS)
+        default="hann", description="Taper of each segment.", json_schema_extra=told("", _WINDOWS)
     )
     segment_s: Positive = Field(
         description="Length of a segment; its inverse is the frequency resolution.",
-        json_schema_extra=_told("s", "above 0, at most the epoch"),
+        json_schema_extra=told("s", "above 0, at most the epoch"),
     )
     overlap: Overlap = Field(
         default=0.5,
         description="Share of a segment that it has in common with the next.",
-        json_schema_extra=_told("share", "0 or above, below 1"),
+        json_schema_extra=told("share", "0 or above, below 1"),
     )
     detrend: Literal["none", "constant", "linear"] = Field(
         default="linear",
         description="What is subtracted from each segment first: nothing, its mean, or its straight line.",
-        json_schema_extra=_told("", "none, constant or linear"),
+        json_schema_extra=told("", "none, constant or linear"),
     )
 
 
@@ -311,12 +212,12 @@ class EegFeatures(Block):
 
     bands_hz: Annotated[dict[Name, Band], Field(min_length=1)] = Field(
         description="Names and edges of the bands; a band holds its lower edge, not its upper one.",
-        json_schema_extra=_told("Hz", f"at least one name with {_BAND}"),
+        json_schema_extra=told("Hz", f"at least one name with {_BAND}"),
     )
     total_hz: Band | None = Field(
         default=None,
         description="Range of the total power and of the spectral edge; absent: lowest to highest band edge.",
-        json_schema_extra=_told("Hz", f"{_BAND}; every band inside"),
+        json_schema_extra=told("Hz", f"{_BAND}; every band inside"),
     )
 
 
@@ -327,7 +228,7 @@ class EcgFeatures(Block):
     bands_hz: Annotated[dict[Name, Band], Field(min_length=1)] = Field(
         default={"vlf": (0.003, 0.04), "lf": (0.04, 0.15), "hf": (0.15, 0.4)},
         description="Names and edges of the bands; a band holds its lower edge, not its upper one.",
-        json_schema_extra=_told("Hz", f"at least one name with {_BAND}"),
+        json_schema_extra=told("Hz", f"at least one name with {_BAND}"),
     )
 
 
@@ -340,50 +241,71 @@ class _Signal(Block):
 
     channels: Annotated[Names, Field(min_length=1)] = Field(
         description="Names of the channels as they stand in the files.",
-        json_schema_extra=_told("", "at least one name, each once"),
+        json_schema_extra=told("", "at least one name, each once"),
     )
     segments: Names | None = Field(
         default=None,
         description="Names of the segments used; absent: all that a recording declares; "
         "an empty list: the whole recording.",
-        json_schema_extra=_told("", "a list of declared segment names"),
+        json_schema_extra=told("", "a list of declared segment names"),
     )
     load: Load | None = Field(
         default=None,
         description="Rate and unit of delimited files for this signal; absent: the study's load.",
-        json_schema_extra=_told("", "a load block"),
+        json_schema_extra=told("", "a load block"),
+    )
+    recorder: Recorder | None = Field(
+        default=None,
+        description="What the recorder lets pass; absent: what the files say of it.",
+        json_schema_extra=told("", "a recorder block"),
     )
     quality: QualityLimits = Field(
         default=QualityLimits(),
-        description="How much of a channel may be unusable before it is left out.",
-        json_schema_extra=_told("", "a quality block"),
+        description="How good a channel must be.",
+        json_schema_extra=told("", "a quality block"),
     )
     resample: Resample | None = Field(
         default=None,
         description="A lower common rate, reached before the filters; absent: the rate of the file.",
-        json_schema_extra=_told("", "a resample block"),
+        json_schema_extra=told("", "a resample block"),
+    )
+    reference: Reference | None = Field(
+        default=None,
+        description="What the channels are measured against, after resampling and before the filters; "
+        "absent: as recorded.",
+        json_schema_extra=told("", "average, a list of the signal's channels, or {pairs: {name: [a, b]}}"),
     )
     filter: tuple[FilterStage, ...] = Field(
         default=(),
         description="Filters, applied in the order in which they stand; absent: none.",
-        json_schema_extra=_told("", "a list of filter stages"),
+        json_schema_extra=told("", "a list of filter stages"),
     )
     epoch: Epoch = Field(
-        description="How a stretch is cut into epochs.", json_schema_extra=_told("", "an epoch block")
+        description="How a stretch is cut into epochs.", json_schema_extra=told("", "an epoch block")
     )
+
+    @property
+    def measured_channels(self) -> tuple[str, ...]:
+        """The channels that features and questions know: those that re-referencing leaves or makes."""
+        return referenced_channels(self.channels, self.reference)
 
 
 class EegSignal(_Signal):
     """Channels of EEG that are processed alike."""
 
     kind: Literal["eeg"] = Field(
-        description="What the channels record.", json_schema_extra=_told("", "eeg, ecg or emg")
+        description="What the channels record.", json_schema_extra=told("", "eeg, ecg or emg")
+    )
+    quality: EegQuality = Field(
+        default=EegQuality(),
+        description="How good a channel must be.",
+        json_schema_extra=told("", "a quality block"),
     )
     spectrum: EegSpectrum = Field(
-        description="How the spectrum is estimated.", json_schema_extra=_told("", "a spectrum block")
+        description="How the spectrum is estimated.", json_schema_extra=told("", "a spectrum block")
     )
     features: EegFeatures = Field(
-        description="What is measured.", json_schema_extra=_told("", "a features block")
+        description="What is measured.", json_schema_extra=told("", "a features block")
     )
 
 
@@ -391,16 +313,21 @@ class EcgSignal(_Signal):
     """Channels of ECG that are processed alike."""
 
     kind: Literal["ecg"] = Field(
-        description="What the channels record.", json_schema_extra=_told("", "eeg, ecg or emg")
+        description="What the channels record.", json_schema_extra=told("", "eeg, ecg or emg")
+    )
+    quality: EcgQuality = Field(
+        default=EcgQuality(),
+        description="How good a channel must be.",
+        json_schema_extra=told("", "a quality block"),
     )
     spectrum: EcgSpectrum = Field(
         description="How the spectrum of the beat intervals is estimated.",
-        json_schema_extra=_told("", "a spectrum block"),
+        json_schema_extra=told("", "a spectrum block"),
     )
     features: EcgFeatures = Field(
         default=EcgFeatures(),
         description="What is measured.",
-        json_schema_extra=_told("", "a features block"),
+        json_schema_extra=told("", "a features block"),
     )
 
 
@@ -408,15 +335,20 @@ class EmgSignal(_Signal):
     """Channels of EMG that are processed alike."""
 
     kind: Literal["emg"] = Field(
-        description="What the channels record.", json_schema_extra=_told("", "eeg, ecg or emg")
+        description="What the channels record.", json_schema_extra=told("", "eeg, ecg or emg")
+    )
+    quality: EmgQuality = Field(
+        default=EmgQuality(),
+        description="How good a channel must be.",
+        json_schema_extra=told("", "a quality block"),
     )
     spectrum: EmgSpectrum = Field(
-        description="How the spectrum is estimated.", json_schema_extra=_told("", "a spectrum block")
+        description="How the spectrum is estimated.", json_schema_extra=told("", "a spectrum block")
     )
     features: EmgFeatures = Field(
         default=EmgFeatures(),
         description="What is measured; no keys yet.",
-        json_schema_extra=_told("", "an empty block"),
+        json_schema_extra=told("", "an empty block"),
     )
 
 
@@ -428,64 +360,64 @@ class Question(Block):
 
     name: Name = Field(
         description="Name of the question in the results.",
-        json_schema_extra=_told("", "text, each name once"),
+        json_schema_extra=told("", "text, each name once"),
     )
     signal: Name = Field(
-        description="Signal whose feature is compared.", json_schema_extra=_told("", "a declared signal")
+        description="Signal whose feature is compared.", json_schema_extra=told("", "a declared signal")
     )
     feature: Name = Field(
         description="Feature that is compared.",
-        json_schema_extra=_told("", "a feature of the signal's kind"),
+        json_schema_extra=told("", "a feature of the signal's kind"),
     )
     band: Name | None = Field(
         default=None,
         description="Band of the feature; required for a feature per band, absent for any other.",
-        json_schema_extra=_told("", "a band of the signal"),
+        json_schema_extra=told("", "a band of the signal"),
     )
     channels: Literal["each", "mean"] | Annotated[Names, Field(min_length=1)] = Field(
         default="each",
         description="each: one test per channel; mean: one test of the channels' mean; "
         "a list: one test for each channel named.",
-        json_schema_extra=_told("", "each, mean or a list of the signal's channels"),
+        json_schema_extra=told("", "each, mean or a list of the signal's channels"),
     )
     segment: Name | None = Field(
         default=None,
         description="Segment that is compared; required when the signal uses several, "
         "unless they are what is compared.",
-        json_schema_extra=_told("", "a segment of the signal"),
+        json_schema_extra=told("", "a segment of the signal"),
     )
     scale: Literal["identity", "log10", "ln", "logit"] = Field(
         default="identity",
         description="Transformation of each value before the test.",
-        json_schema_extra=_told("", "identity, log10, ln or logit"),
+        json_schema_extra=told("", "identity, log10, ln or logit"),
     )
     within: Name | None = Field(
         default=None,
         description="Design column whose levels are compared within each participant, or segment.",
-        json_schema_extra=_told("", "a design column or segment; either within or between"),
+        json_schema_extra=told("", "a design column or segment; either within or between"),
     )
     between: Name | None = Field(
         default=None,
         description="Design column whose levels are groups of different participants.",
-        json_schema_extra=_told("", "a design column; either within or between"),
+        json_schema_extra=told("", "a design column; either within or between"),
     )
     contrast: tuple[Name, Name] = Field(
         description="The two levels compared: the estimate is the first minus the second.",
-        json_schema_extra=_told("", "two different levels of the column"),
+        json_schema_extra=told("", "two different levels of the column"),
     )
     test: Literal["paired_t", "welch_t"] = Field(
         description="paired_t: differences within participants; welch_t: two groups of unequal variance.",
-        json_schema_extra=_told("", "paired_t (with within) or welch_t (with between)"),
+        json_schema_extra=told("", "paired_t (with within) or welch_t (with between)"),
     )
     family: Name | None = Field(
         default=None,
         description="p values of one family are adjusted together; absent: the question is its own family.",
-        json_schema_extra=_told("", "text"),
+        json_schema_extra=told("", "text"),
     )
     confidence: Annotated[Number, Field(gt=0.5, lt=1)] = Field(
         default=0.95,
         description="Coverage of the confidence intervals.",
-        json_schema_extra=_told("share", "above 0.5, below 1"),
+        json_schema_extra=told("share", "above 0.5, below 1"),
     )
 
     @model_validator(mode="after")
@@ -509,43 +441,43 @@ class AnnotationSegments(Block):
 
     annotations: Annotated[Names, Field(min_length=1)] = Field(
         description="Texts of the annotations whose stretches become segments of that name.",
-        json_schema_extra=_told("", "at least one text, each once"),
+        json_schema_extra=told("", "at least one text, each once"),
     )
 
 
 class StudyDescription(Block):
     """The whole of study.yaml."""
 
-    study: Name = Field(description="Title of the study.", json_schema_extra=_told("", "text"))
+    study: Name = Field(description="Title of the study.", json_schema_extra=told("", "text"))
     recordings: Name = Field(
         default="recordings.csv",
         description="Table of recordings, in the study folder.",
-        json_schema_extra=_told("", "path of a .csv or .tsv file"),
+        json_schema_extra=told("", "path of a .csv or .tsv file"),
     )
     segments: Name | AnnotationSegments | None = Field(
         default=None,
         description="Table of segments, or the annotations that become segments; "
         "absent: segments.csv where the study folder has one.",
-        json_schema_extra=_told("", "path of a .csv or .tsv file, or {annotations: [texts]}"),
+        json_schema_extra=told("", "path of a .csv or .tsv file, or {annotations: [texts]}"),
     )
     mains_hz: Literal[50, 60] = Field(
-        description="Mains frequency where the study was recorded.", json_schema_extra=_told("Hz", "50 or 60")
+        description="Mains frequency where the study was recorded.", json_schema_extra=told("Hz", "50 or 60")
     )
     load: Load = Field(
         default=Load(),
         description="Rate and unit of delimited files, for every signal without a load block of its own.",
-        json_schema_extra=_told("", "a load block"),
+        json_schema_extra=told("", "a load block"),
     )
     signals: Annotated[dict[Name, Annotated[AnySignal, Field(discriminator="kind")]], Field(min_length=1)] = (
         Field(
             description="Names of the signals and how each is processed.",
-            json_schema_extra=_told("", "at least one named signal"),
+            json_schema_extra=told("", "at least one named signal"),
         )
     )
     questions: tuple[Question, ...] = Field(
         default=(),
         description="The comparisons that the study declares.",
-        json_schema_extra=_told("", "a list of questions, each name once"),
+        json_schema_extra=told("", "a list of questions, each name once"),
     )
 
     def load_of(self, signal: AnySignal) -> Load:

@@ -81,9 +81,10 @@ def check_feature(index: int, question: Question, signal: AnySignal) -> Iterator
     """
     path: Path = ("questions", index)
     for position, channel in enumerate(question.channels if not isinstance(question.channels, str) else ()):
-        if channel not in signal.channels:
-            remedy = suggestion(channel, signal.channels, "Add it to the signal, or delete it here.")
-            allowed = f"a channel of {question.signal}: {listed(signal.channels)}"
+        if channel not in signal.measured_channels:
+            known = signal.measured_channels
+            remedy = suggestion(channel, known, "Add it to the signal, or delete it here.")
+            allowed = f"a channel of {question.signal}: {listed(known)}"
             yield Fault((*path, "channels", position), channel, allowed, remedy)
     feature = find_feature(signal.kind, question.feature)
     if feature is None:

@@ -7,21 +7,21 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from bandcairn.study.faults import Fault, listed, suggestion
+from bandcairn.study.filter_checks import (
+    check_notch_rate,
+    check_reference,
+    check_stage_rates,
+    check_stopped_bands,
+    passband,
+)
 from bandcairn.study.models import EcgSignal, EegSignal, EmgSignal
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
     from bandcairn.study.faults import Path
+    from bandcairn.study.filter_checks import Passband
     from bandcairn.study.models import AnySignal
-
-
-@dataclass(frozen=True, slots=True)
-class Passband:
-    """What the filters of a signal let pass, by their nominal cut-offs, in Hz."""
-
-    low_hz: float
-    high_hz: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,21 +36,7 @@ class DeclaredRange:
         return f"{self.low_hz:g} to {self.high_hz:g} Hz"
 
 
-def passband(signal: AnySignal) -> Passband:
-    """Return the range that all lowpass, highpass and bandpass stages let pass."""
-    low_hz, high_hz = 0.0, math.inf
-    for stage in signal.filter:
-        cutoff = stage.cutoff_hz
-        if stage.type == "bandpass" and isinstance(cutoff, tuple):
-            low_hz, high_hz = max(low_hz, cutoff[0]), min(high_hz, cutoff[1])
-        elif stage.type == "highpass" and not isinstance(cutoff, tuple):
-            low_hz = max(low_hz, cutoff)
-        elif stage.type == "lowpass" and not isinstance(cutoff, tuple):
-            high_hz = min(high_hz, cutoff)
-    return Passband(low_hz, high_hz)
-
-
-def check_signal(name: str, signal: AnySignal) -> Iterator[Fault]:
+def check_signal(name: str, signal: AnySignal, mains_hz: float | None) -> Iterator[Fault]:
     """Yield what does not fit within one signal.
 
     Parameters
@@ -59,6 +45,8 @@ def check_signal(name: str, signal: AnySignal) -> Iterator[Fault]:
         Name of the signal.
     signal : AnySignal
         Its description.
+    mains_hz : float or None
+        Frequency of the mains; None where it could not be understood.
 
     Yields
     ------
@@ -66,15 +54,17 @@ def check_signal(name: str, signal: AnySignal) -> Iterator[Fault]:
     """
     path: Path = ("signals", name)
     yield from _check_name(path, name)
+    yield from check_reference(name, signal)
     passed = passband(signal)
     if passed.low_hz >= passed.high_hz:
         found = f"nothing passes: high-pass at {passed.low_hz:g} Hz, low-pass at {passed.high_hz:g} Hz"
         yield Fault((*path, "filter"), found, "a range that passes", "Exchange or correct the cut-offs.")
     elif isinstance(signal, EegSignal):
         yield from _check_bands_pass(path, signal, passed)
+        yield from _check_bands_stopped(name, signal, mains_hz)
     if signal.resample is not None:
         origin = f"after resampling to {signal.resample.rate_hz:g} Hz"
-        yield from check_nyquist(name, signal, signal.resample.rate_hz, origin)
+        yield from check_nyquist(name, signal, signal.resample.rate_hz, origin, mains_hz)
     if isinstance(signal, EcgSignal):
         yield from _check_interpolation(path, signal)
     yield from _check_resolution(path, signal)
@@ -103,7 +93,9 @@ def check_segment_names(name: str, signal: AnySignal, declared: tuple[str, ...])
             yield Fault(("signals", name, "segments", index), segment, allowed, remedy)
 
 
-def check_nyquist(name: str, signal: AnySignal, rate_hz: float, origin: str) -> Iterator[Fault]:
+def check_nyquist(
+    name: str, signal: AnySignal, rate_hz: float, origin: str, mains_hz: float | None
+) -> Iterator[Fault]:
     """Yield the cut-offs and bands that half a sampling rate cannot hold.
 
     Parameters
@@ -116,19 +108,17 @@ def check_nyquist(name: str, signal: AnySignal, rate_hz: float, origin: str) -> 
         Rate at which the filters work.
     origin : str
         Where that rate comes from, for the message.
+    mains_hz : float or None
+        Frequency of the mains; None where it could not be understood.
 
     Yields
     ------
     Fault
     """
+    yield from check_stage_rates(name, signal, rate_hz, origin)
+    if mains_hz is not None:
+        yield from check_notch_rate(name, signal, rate_hz, origin, mains_hz)
     nyquist_hz = rate_hz / 2
-    for index, stage in enumerate(signal.filter):
-        cutoffs = stage.cutoff_hz if isinstance(stage.cutoff_hz, tuple) else (stage.cutoff_hz,)
-        if max(cutoffs) >= nyquist_hz:
-            allowed = f"below {nyquist_hz:g} Hz, half the rate {origin}"
-            remedy = "Lower the cut-off, or keep a higher rate."
-            path = ("signals", name, "filter", index, "cutoff_hz")
-            yield Fault(path, f"{max(cutoffs):g} Hz", allowed, remedy)
     if isinstance(signal, EegSignal):
         for band in declared_ranges(name, signal):
             if band.high_hz > nyquist_hz:
@@ -168,6 +158,13 @@ def _check_bands_pass(path: Path, signal: EegSignal, passed: Passband) -> Iterat
             remedy = "Widen total_hz: a relative power is a share of the total."
             band_path = (*path, "features", "bands_hz", name)
             yield Fault(band_path, f"{low_hz:g} to {high_hz:g} Hz", allowed, remedy)
+
+
+def _check_bands_stopped(name: str, signal: EegSignal, mains_hz: float | None) -> Iterator[Fault]:
+    if mains_hz is None:
+        return
+    for band in declared_ranges(name, signal):
+        yield from check_stopped_bands(band.path, (band.low_hz, band.high_hz), signal, mains_hz)
 
 
 def _check_interpolation(path: Path, signal: EcgSignal) -> Iterator[Fault]:
