@@ -5,8 +5,9 @@ from __future__ import annotations
 import json
 from typing import TYPE_CHECKING, Any
 
+from bandcairn.execution.filter_nodes import filter_node, reference_node
 from bandcairn.execution.group_nodes import statistics_node, table_node, verdict_node
-from bandcairn.execution.signal_nodes import filter_node, load_node, quality_node, resample_node
+from bandcairn.execution.signal_nodes import load_node, quality_node, resample_node
 from bandcairn.execution.spectrum_nodes import beats_node, epoch_node, features_node, spectrum_node
 
 if TYPE_CHECKING:
@@ -19,6 +20,7 @@ if TYPE_CHECKING:
 _STEPS: dict[str, Callable[[Mapping[str, Any], Mapping[str, Frame]], Frame]] = {
     "quality": quality_node,
     "resample": resample_node,
+    "reference": reference_node,
     "filter": filter_node,
     "beats": beats_node,
     "epoch": epoch_node,

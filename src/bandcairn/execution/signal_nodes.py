@@ -7,7 +7,6 @@ from typing import TYPE_CHECKING, Any
 
 from bandcairn.execution.frames import frame_to_signal, raw_to_frame, signal_to_frame
 from bandcairn.recordings import Declared, read
-from bandcairn.steps.filter import FilterStage, apply_stages, effective_cutoffs
 from bandcairn.steps.quality import assess
 from bandcairn.steps.resample import resample
 from bandcairn.store.frame import Frame
@@ -49,23 +48,6 @@ def resample_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -
     return signal_to_frame(resample(frame_to_signal(parents["signal"]), exact_rate(parameters["rate_hz"])))
 
 
-def filter_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
-    """Apply the filter stages; the effective cut-offs stand beside the samples."""
-    signal = frame_to_signal(parents["signal"])
-    stages = tuple(_stage(stage) for stage in parameters["stages"])
-    cutoffs = [
-        {"stage": c.stage, "requested_hz": c.requested_hz, "effective_hz": c.effective_hz}
-        for c in effective_cutoffs(stages, float(signal.rate_hz))
-    ]
-    return signal_to_frame(apply_stages(signal, stages), cutoffs=cutoffs)
-
-
 def exact_rate(rate_hz: float) -> Fraction:
     """Return a declared rate as the fraction its shortest decimal text means."""
     return Fraction(str(rate_hz))
-
-
-def _stage(stage: Mapping[str, Any]) -> FilterStage:
-    cutoff_hz = stage["cutoff_hz"]
-    edges = tuple(cutoff_hz) if isinstance(cutoff_hz, list) else (cutoff_hz,)
-    return FilterStage(**{**stage, "cutoff_hz": tuple(float(edge) for edge in edges)})

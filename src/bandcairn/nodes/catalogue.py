@@ -27,12 +27,13 @@ class Step:
     does: str
 
 
-# In the order of the data. The first eight act on one signal of one recording, the others on the study.
+# In the order of the data. The first nine act on one signal of one recording, the others on the study.
 STEPS = (
     Step("load", 1, "reads a signal's channels from the raw file at their own rate"),
     Step("quality", 1, "measures clipped and flat stretches before anything is done to the samples"),
     Step("resample", 1, "brings the signal to the study's rate"),
-    Step("filter", 1, "applies the filter stages in order"),
+    Step("reference", 1, "measures the channels against others"),
+    Step("filter", 2, "applies the filter stages in order"),
     Step("beats", 1, "finds the R peaks of an ECG"),
     Step("epoch", 1, "lays windows and marks those to reject"),
     Step("spectrum", 1, "estimates power spectral densities"),
@@ -42,5 +43,5 @@ STEPS = (
     Step("statistics", 1, "answers the questions of one family"),
 )
 VERSIONS = {step.name: step.version for step in STEPS}
-RECORDING_STEPS = tuple(step.name for step in STEPS[:8])
-STUDY_STEPS = tuple(step.name for step in STEPS[8:])
+RECORDING_STEPS = tuple(step.name for step in STEPS[:9])
+STUDY_STEPS = tuple(step.name for step in STEPS[9:])

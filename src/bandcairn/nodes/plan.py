@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 
 from bandcairn.nodes.key import canonical_json
 from bandcairn.nodes.node import Node, make_node
+from bandcairn.study.reference_blocks import BipolarPairs
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Mapping
@@ -21,7 +22,9 @@ if TYPE_CHECKING:
 
     from bandcairn.nodes.survey import RawContent
     from bandcairn.study.description import LoadedStudy
+    from bandcairn.study.filter_blocks import FilterStage
     from bandcairn.study.models import EcgSignal, EegSignal, EmgSignal, Question
+    from bandcairn.study.reference_blocks import Reference
     from bandcairn.study.tables import RecordingRow
 
     SignalDescription = EegSignal | EcgSignal | EmgSignal
@@ -135,6 +138,18 @@ def _recipe(block: BaseModel, exclude: set[str] | None = None) -> dict[str, Any]
     return block.model_dump(mode="json", exclude_none=True, exclude=exclude)
 
 
+def _stage_recipe(stage: FilterStage, mains_hz: float) -> dict[str, Any]:
+    """Return a filter stage; a notch alone depends on the frequency of the mains."""
+    return {**_recipe(stage), "mains_hz": mains_hz} if stage.type == "notch" else _recipe(stage)
+
+
+def _reference_recipe(reference: Reference) -> dict[str, Any]:
+    """Return a reference; pairs as a list, which keeps their order."""
+    if isinstance(reference, BipolarPairs):
+        return {"pairs": [(name, *members) for name, members in reference.pairs.items()]}
+    return {"reference": reference}
+
+
 def design_columns(study: LoadedStudy) -> tuple[str, ...]:
     """Return the design columns of the recordings table, in their order."""
     return tuple(study.recordings[0].design)
@@ -148,7 +163,9 @@ class _SignalChain:
         self.signal = signal
         self.channels = signal.channels
         self.declared = signal.load or study.description.load
-        self.filter = canonical_json({"stages": [_recipe(stage) for stage in signal.filter]})
+        mains_hz = study.description.mains_hz
+        self.filter = canonical_json({"stages": [_stage_recipe(stage, mains_hz) for stage in signal.filter]})
+        self.reference = canonical_json(_reference_recipe(signal.reference)) if signal.reference else None
         self.spectrum = canonical_json({"kind": signal.kind, **_recipe(signal.spectrum)})
         self.features = canonical_json({"kind": signal.kind, **_recipe(signal.features)})
         self.load_parameters = cache(self._load_parameters)
@@ -182,6 +199,10 @@ class _SignalChain:
             content.rate_hz(self.channels[0], rate_hz)
         ):
             node = make("resample", canonical_json({"rate_hz": resample.rate_hz}), signal=key)
+            key = node.key
+            yield node
+        if self.reference is not None:
+            node = make("reference", self.reference, signal=key)
             key = node.key
             yield node
         if self.signal.filter:
@@ -283,7 +304,7 @@ def _statistics_node(
     parameters = {
         "family": family,
         "adjustment": "holm",
-        "questions": [_question(question, signals[question.signal].channels) for question in questions],
+        "questions": [_question(question, signals[question.signal].measured_channels) for question in questions],
     }
     asked = sorted({question.signal for question in questions})
     return make_node(
