@@ -196,8 +196,8 @@ def test_threads_give_the_same_digests(tmp_path: Path) -> None:
 
 def test_faulty_layout_is_refused(build: Build, channel: Make) -> None:
     """What cannot be read has no content."""
-    with pytest.raises(RecordingError, match="-1 as the number"):
-        content_digests(build([channel("Cz")], n_records="-1"))
+    with pytest.raises(RecordingError, match="'-2' as the number"):
+        content_digests(build([channel("Cz")], n_records="-2"))
 
 
 def test_layout_of_format_1_is_what_its_description_says(build: Build, channel: Make) -> None:

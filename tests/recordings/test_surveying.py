@@ -23,7 +23,7 @@ def test_every_file_gets_its_result_or_its_error_in_order(
 ) -> None:
     """One faulty file and one absent one among sound ones; a name given twice counts once."""
     sound = [build([channel("Cz")], name=f"p{number}.edf") for number in range(6)]
-    faulty = build([channel("Cz")], name="faulty.edf", n_records="-1")
+    faulty = build([channel("Cz")], name="faulty.edf", n_records="-2")
     paths = [*sound[:3], faulty, tmp_path / "absent.edf", *sound[3:], sound[0]]
     steps: list[tuple[int, int]] = []
     results = survey(
@@ -36,7 +36,7 @@ def test_every_file_gets_its_result_or_its_error_in_order(
     assert list(results) == paths[:-1]
     for path in sound:
         assert results[path] == Surveyed(inspect(path), content_digests(path))
-    assert "-1 as the number" in str(results[faulty])
+    assert "'-2' as the number" in str(results[faulty])
     assert isinstance(results[tmp_path / "absent.edf"], RecordingError)
     assert steps == [(done, 8) for done in range(1, 9)]
 

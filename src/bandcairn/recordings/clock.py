@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 
 from bandcairn.recordings.header import as_text
 from bandcairn.recordings.refusal import refusal
+from bandcairn.signal import Run
 
 if TYPE_CHECKING:
     from pathlib import Path
@@ -20,10 +21,31 @@ if TYPE_CHECKING:
     from bandcairn.errors import RecordingError
 
 TIME_COLUMN = "time_s"
+_REGULAR = "steps of one length, to half of the last printed digit"
+_LOST = "Samples are missing or doubled there: export each regular stretch as a file of its own."
 # The hair beyond half a printed digit: sums of binary fractions drift by less than a nanosecond.
 _HAIR_S = 1e-9
 # Bounded, so that a damaged cell cannot make the table of all cells huge.
 _TIME = re.compile(rb"\s*[+-]?(?:[0-9]{1,24}\.?[0-9]{0,24}|\.[0-9]{1,24})(?:[eE][+-]?[0-9]{1,3})?\s*")
+
+
+@dataclass(frozen=True, slots=True)
+class Jump:
+    """A row before which whole samples are missing.
+
+    Attributes
+    ----------
+    row : int
+        The row, counted from 0.
+    index : int
+        Which sample it holds, counted from the first one as if none were missing.
+    told : str
+        The time that stands there and the one before, for a refusal.
+    """
+
+    row: int
+    index: int
+    told: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,10 +57,13 @@ class Clock:
     slowest_hz, fastest_hz : Fraction or None
         Every rate between them puts each sample within half of the last printed digit of its time; None where
         there is a single row.
+    jumps : tuple of Jump
+        Rows before which whole samples are missing.
     """
 
     slowest_hz: Fraction | None
     fastest_hz: Fraction | None
+    jumps: tuple[Jump, ...] = ()
 
     @property
     def rate_hz(self) -> Fraction | None:
@@ -54,6 +79,14 @@ class Clock:
             return "any rate"
         return f"{float(self.slowest_hz):.9g} to {float(self.fastest_hz):.9g} Hz"
 
+    def runs(self, n_rows: int, rate_hz: Fraction) -> tuple[Run, ...]:
+        """Return the gap-free runs of a file of `n_rows` rows."""
+        firsts = [(0, 0), *((jump.row, jump.index) for jump in self.jumps)]
+        stops = [*(jump.row for jump in self.jumps), n_rows]
+        return tuple(
+            Run(row, stop, index / rate_hz) for (row, index), stop in zip(firsts, stops, strict=True)
+        )
+
     def agrees_with(self, rate_hz: Fraction) -> bool:
         """Return whether `rate_hz` is among the possible rates."""
         if self.slowest_hz is None or self.fastest_hz is None:
@@ -65,7 +98,8 @@ def read_clock(path: Path, cells: list[bytes]) -> Clock:
     """Return the rates that fit all printed times.
 
     Sample k lies at k / rate, so row k bounds the period to (time +- half a digit) / k; the bounds of all
-    rows must overlap.
+    rows must overlap. Where they do not, a step of more than one and a half periods is taken for missing
+    samples, if a whole number of them makes all bounds overlap.
 
     Parameters
     ----------
@@ -95,13 +129,78 @@ def read_clock(path: Path, cells: list[bytes]) -> Clock:
         raise refusal(path, f"{as_text(cells[0])} in row 1, column {TIME_COLUMN}", "0", remedy)
     if len(cells) == 1:
         return Clock(None, None)
-    index = np.arange(1, len(cells))
-    shortest_s = np.maximum.accumulate((times_s[1:] - slack_s[1:]) / index)
-    longest_s = np.minimum.accumulate((times_s[1:] + slack_s[1:]) / index)
+    index = np.arange(len(cells))
+    bounds_s = _period_bounds_s(times_s, slack_s, index)
+    jumps: tuple[Jump, ...] = ()
+    if bounds_s.off is not None:
+        index = _index_with_jumps(times_s, slack_s)
+        first_off = bounds_s.off
+        bounds_s = _period_bounds_s(times_s, slack_s, index)
+        rows = np.flatnonzero(np.diff(index) > 1) + 1
+        if bounds_s.off is not None or not rows.size:
+            raise refusal(path, _jump_told(cells, first_off), _REGULAR, _LOST)
+        jumps = tuple(Jump(int(row), int(index[row]), _jump_told(cells, int(row))) for row in rows)
+    if bounds_s.shortest_s <= 0:
+        found = f"times in column {TIME_COLUMN} too coarse to tell the rate"
+        remedy = "Print more digits, or leave the column away and declare `load: {rate_hz: ...}`."
+        raise refusal(path, found, "more digits than one sample needs", remedy)
+    return Clock(1 / Fraction(bounds_s.longest_s), 1 / Fraction(bounds_s.shortest_s), jumps)
+
+
+def refused_jump(path: Path, jump: Jump) -> RecordingError:
+    """Return the error for a file whose missing samples are not declared as gaps."""
+    return refusal(path, jump.told, _REGULAR, f"{_LOST} Or declare `load: {{missing: gap}}` in study.yaml.")
+
+
+@dataclass(frozen=True, slots=True)
+class _Bounds:
+    """Shortest and longest period that fit all rows; the first row that fits none, if there is one."""
+
+    shortest_s: float
+    longest_s: float
+    off: int | None
+
+
+def _period_bounds_s(
+    times_s: NDArray[np.float64], slack_s: NDArray[np.float64], index: NDArray[np.intp]
+) -> _Bounds:
+    import numpy as np
+
+    shortest_s = np.maximum.accumulate((times_s[1:] - slack_s[1:]) / index[1:])
+    longest_s = np.minimum.accumulate((times_s[1:] + slack_s[1:]) / index[1:])
     off = np.flatnonzero((shortest_s > longest_s) | (longest_s <= 0))
-    if off.size:
-        raise _irregular(path, cells, int(off[0]) + 1)
-    return _clock(path, float(shortest_s[-1]), float(longest_s[-1]))
+    return _Bounds(float(shortest_s[-1]), float(longest_s[-1]), int(off[0]) + 1 if off.size else None)
+
+
+def _index_with_jumps(times_s: NDArray[np.float64], slack_s: NDArray[np.float64]) -> NDArray[np.intp]:
+    """Return which sample each row holds if long steps are missing samples; plain rows if there are none."""
+    import numpy as np
+
+    steps_s = np.diff(times_s)
+    typical_s = float(np.median(steps_s))
+    late = np.flatnonzero(steps_s > 1.5 * typical_s) + 1
+    if typical_s <= 0 or not late.size:
+        return np.arange(len(times_s))
+    edges = np.concatenate(([0], late, [len(times_s)]))
+    longest = int(np.argmax(np.diff(edges)))
+    first, stop = int(edges[longest]), int(edges[longest + 1])
+    period_s = _period_s(times_s[first:stop], slack_s[first:stop]) or typical_s
+    skipped = np.zeros(len(times_s), dtype=np.intp)
+    skipped[late] = np.rint(steps_s[late - 1] / period_s).astype(np.intp) - 1
+    index: NDArray[np.intp] = np.arange(len(times_s)) + np.cumsum(np.maximum(skipped, 0))
+    return index
+
+
+def _period_s(times_s: NDArray[np.float64], slack_s: NDArray[np.float64]) -> float | None:
+    """Return the simplest period of a stretch; None where it is too short or too coarse to tell one."""
+    import numpy as np
+
+    if len(times_s) < 2:
+        return None
+    bounds_s = _period_bounds_s(times_s - times_s[0], slack_s + slack_s[0], np.arange(len(times_s)))
+    if bounds_s.off is not None or bounds_s.shortest_s <= 0:
+        return None
+    return float(1 / simplest_between(1 / Fraction(bounds_s.longest_s), 1 / Fraction(bounds_s.shortest_s)))
 
 
 def simplest_between(low: Fraction, high: Fraction) -> Fraction:
@@ -137,17 +236,6 @@ def _decimals(texts: NDArray[np.bytes_]) -> NDArray[np.float64]:
     return decimals
 
 
-def _irregular(path: Path, cells: list[bytes], row: int) -> RecordingError:
+def _jump_told(cells: list[bytes], row: int) -> str:
     before, here = as_text(cells[row - 1]), as_text(cells[row])
-    found = f"{here} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}, after {before}"
-    allowed = "steps of one length, to half of the last printed digit"
-    remedy = "Samples are missing or doubled there: export each regular stretch as a file of its own."
-    return refusal(path, found, allowed, remedy)
-
-
-def _clock(path: Path, shortest_s: float, longest_s: float) -> Clock:
-    if shortest_s <= 0:
-        found = f"times in column {TIME_COLUMN} too coarse to tell the rate"
-        remedy = "Print more digits, or leave the column away and declare `load: {rate_hz: ...}`."
-        raise refusal(path, found, "more digits than one sample needs", remedy)
-    return Clock(slowest_hz=1 / Fraction(longest_s), fastest_hz=1 / Fraction(shortest_s))
+    return f"{here} in row {row + 1} (line {row + 2}), column {TIME_COLUMN}, after {before}"

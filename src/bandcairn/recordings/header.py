@@ -18,6 +18,7 @@ from functools import lru_cache
 from typing import TYPE_CHECKING
 
 from bandcairn.recordings.refusal import refusal, unreadable
+from bandcairn.signal import Repair
 
 if TYPE_CHECKING:
     from pathlib import Path
@@ -27,6 +28,12 @@ _VERSIONS = {"EDF": b"0       ", "BDF": b"\xffBIOSEMI"}
 _SAMPLE_BYTES = {"EDF": 2, "BDF": 3}
 # Width of the fields of the signal headers, which are grouped by field: all labels, then all transducers ...
 _SIGNAL_FIELDS = (16, 80, 8, 8, 8, 8, 8, 80, 8, 32)
+_WIDTH = 8  # of every field that holds a number
+# Names under which recorders and converters store trigger words (common practice): numbers, but no voltages.
+_TRIGGER = re.compile(r"status|trig(gers?)?|markers?|events?|stim|sti ?[0-9]+", re.IGNORECASE)
+_DATE_AND_TIME = re.compile(
+    rb"(0[1-9]|[12][0-9]|3[01])\.(0[1-9]|1[0-2])\.[0-9]{2}([01][0-9]|2[0-3])\.[0-5][0-9]\.[0-5][0-9]"
+)
 _WHOLE_NUMBER = re.compile(r"[+-]?[0-9]+")
 # Two digits of exponent: more would not fit a double once scaled.
 _DECIMAL_NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]{1,2})?")
@@ -57,6 +64,8 @@ class SignalHeader:
         Number of samples in each data record.
     first_byte, stop_byte : int
         Place of the samples inside a data record.
+    prefilter : str
+        The recorder's filters as written.
     """
 
     label: str
@@ -65,6 +74,7 @@ class SignalHeader:
     samples_per_record: int
     first_byte: int
     stop_byte: int
+    prefilter: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,10 +87,21 @@ class Header:
         ``"EDF"`` or ``"BDF"``.
     header_bytes, record_bytes, n_records : int
         Size of the header, size and number of the data records.
+        `n_records` counts those that are used.
     record_s : Fraction
         Duration of a data record, exact.
+    record_s_text : str
+        The same as written.
     signals : tuple of SignalHeader
         All of them, annotations included, in the order of the file.
+    discontinuous : bool
+        Whether the file declares that its data records may have gaps between them (EDF+D, BDF+D).
+    repair : Repair or None
+        What was found where the size of the file does not fit the header.
+    start : str
+        Local date and time as written.
+    encoding : str
+        What reads its texts: ASCII, UTF-8 or Latin-1.
     """
 
     container: str
@@ -88,7 +109,12 @@ class Header:
     record_bytes: int
     n_records: int
     record_s: Fraction
+    record_s_text: str
     signals: tuple[SignalHeader, ...]
+    discontinuous: bool
+    repair: Repair | None
+    start: str
+    encoding: str
 
     @property
     def sample_bytes(self) -> int:
@@ -102,9 +128,13 @@ class Header:
 
     @property
     def channels(self) -> tuple[SignalHeader, ...]:
-        """Signals that hold samples of the body: neither annotations nor the trigger words of BDF."""
-        left_out = {"EDF Annotations"} if self.container == "EDF" else {"BDF Annotations", "Status"}
-        return tuple(signal for signal in self.signals if signal.label not in left_out)
+        """Signals that hold samples of the body: neither annotations nor trigger words."""
+        return tuple(signal for signal in self.signals if not is_marker(signal.label))
+
+    @property
+    def left_out(self) -> tuple[str, ...]:
+        """Labels of the signals that are no channels."""
+        return tuple(signal.label for signal in self.signals if is_marker(signal.label))
 
     def rate_hz(self, signal: SignalHeader) -> Fraction:
         """Return the sampling rate of `signal`, exact: a rate stands nowhere in the file."""
@@ -126,13 +156,12 @@ def read_header(path: Path) -> Header:
     Returns
     -------
     Header
-        Nothing is repaired.
+        Where the size does not fit the number of records, the whole records are used and `repair` says so.
 
     Raises
     ------
     RecordingError
-        If the file is empty, is not what its suffix says, is discontinuous, or if its number of records
-        is unknown or does not fit its size.
+        If the file is empty, is not what its suffix says, contradicts itself, or holds no whole record.
     """
     container = path.suffix[1:].upper()
     try:
@@ -146,17 +175,50 @@ def read_header(path: Path) -> Header:
         raise unreadable(path, error) from error
     header_bytes = _header_bytes(path, main, n_signals, n_bytes)
     parsed = _signals(path, signals, n_signals, _SAMPLE_BYTES[container])
+    claimed = _whole(path, main[236:244], "the number of data records", at_least=-1)
+    record_bytes = parsed[-1].stop_byte
+    repair = _repair(path, claimed, n_bytes - header_bytes, record_bytes)
+    if repair is not None:
+        _check_layout(path, parsed, repair, n_bytes - header_bytes, _SAMPLE_BYTES[container])
+        _check_padding(path, signals[-_SIGNAL_FIELDS[-1] :])
     header = Header(
         container=container,
         header_bytes=header_bytes,
-        record_bytes=parsed[-1].stop_byte,
-        n_records=_n_records(path, main),
+        record_bytes=record_bytes,
+        n_records=_n_used(claimed, repair),
         record_s=decimal(path, as_text(main[244:252]), "the duration of a data record"),
+        record_s_text=as_text(main[244:252]),
         signals=parsed,
+        discontinuous=main[192:197] == f"{container}+D".encode(),
+        repair=repair,
+        start=_start(main),
+        encoding=encoding_of(main[8:] + signals),
     )
     _check_duration(path, header)
-    _check_size(path, header, n_bytes)
+    _check_time_stamps(path, header)
     return header
+
+
+def is_marker(label: str) -> bool:
+    """Return whether a label names annotations, a status word or triggers rather than a signal."""
+    return label in {"EDF Annotations", "BDF Annotations"} or bool(_TRIGGER.fullmatch(label))
+
+
+def encoding_of(texts: bytes) -> str:
+    """Return what `as_text` reads the texts as."""
+    if texts.isascii():
+        return "ASCII"
+    try:
+        texts.decode()
+    except UnicodeDecodeError:
+        return "Latin-1"
+    return "UTF-8"
+
+
+def one_character_apart(first: str, second: str) -> bool:
+    """Return whether two header fields differ in one character, as damage of one byte leaves them."""
+    pairs = zip(first.ljust(_WIDTH), second.ljust(_WIDTH), strict=True)
+    return sum(one != other for one, other in pairs) == 1
 
 
 def scaling_of(path: Path, signal: SignalHeader) -> Scaling:
@@ -219,10 +281,6 @@ def _check_start(path: Path, main: bytes, container: str) -> None:
         raise refusal(path, found, f"{container}, as its suffix says", remedy)
     if len(main) < _BLOCK_BYTES:
         raise refusal(path, f"{len(main)} bytes", "a header of at least 512 bytes", "Copy it again.")
-    if main[192:197] in {b"EDF+D", b"BDF+D"}:
-        found = f"a discontinuous file ({as_text(main[192:197])})"
-        remedy = "Export each stretch as a file of its own: stretches are never glued together."
-        raise refusal(path, found, "a continuous one (gaps are not supported yet)", remedy)
 
 
 def _header_bytes(path: Path, main: bytes, n_signals: int, n_bytes: int) -> int:
@@ -237,11 +295,64 @@ def _header_bytes(path: Path, main: bytes, n_signals: int, n_bytes: int) -> int:
     return header_bytes
 
 
-def _n_records(path: Path, main: bytes) -> int:
-    if as_text(main[236:244]) == "-1":
-        remedy = "The recording was not closed: finish or export it in the recorder."
-        raise refusal(path, "-1 as the number of data records (unknown)", "a whole number from 1", remedy)
-    return _whole(path, main[236:244], "the number of data records", at_least=1)
+def _repair(path: Path, claimed: int, n_data_bytes: int, record_bytes: int) -> Repair | None:
+    """Return what was found where the data do not fit the claimed number of records, None where they do."""
+    found, rest = divmod(n_data_bytes, record_bytes)
+    if claimed == 0 or not found:
+        remedy = "The recording holds no samples: copy it again from the recorder."
+        stated = f"{claimed} data records by the header, {found} whole ones in the file"
+        raise refusal(path, stated, "one or more", remedy)
+    if (claimed, 0) == (found, rest):
+        return None
+    used = found if claimed < 0 else min(claimed, found)
+    return Repair(claimed, found, n_data_bytes - used * record_bytes)
+
+
+def _n_used(claimed: int, repair: Repair | None) -> int:
+    if repair is None:
+        return claimed
+    return repair.n_records_found if claimed < 0 else min(claimed, repair.n_records_found)
+
+
+def _check_layout(
+    path: Path, signals: tuple[SignalHeader, ...], repair: Repair, n_data_bytes: int, sample_bytes: int
+) -> None:
+    """Refuse a size that the claimed number of records fits if one character of one field were another.
+
+    A damaged number of samples per record would shift every sample behind it; a file cut short looks alike.
+    """
+    claimed = repair.n_records_header
+    if claimed <= 0 or n_data_bytes % (claimed * sample_bytes):
+        return
+    more = (n_data_bytes // claimed - signals[-1].stop_byte) // sample_bytes
+    for signal in signals:
+        stated, other = signal.samples_per_record, signal.samples_per_record + more
+        if more and other > 0 and one_character_apart(str(stated), str(other)):
+            found = f"{stated} samples per record of {signal.label}, and data that fit {other}"
+            remedy = (
+                "The header or the end of the file is damaged, which of them cannot be told: copy it again."
+            )
+            raise refusal(path, found, "numbers that fit the size of the file", remedy)
+
+
+def _check_padding(path: Path, last_field: bytes) -> None:
+    """Refuse a file cut short whose header does not end as headers do: then bytes of the header are missing."""
+    if not last_field.strip(b"\0") or (last_field.endswith(b" ") and last_field.isascii()):
+        return
+    found = "a size that does not fit, and a header that does not end in blanks"
+    raise refusal(path, found, "a whole header", "The header is damaged: restore the original.")
+
+
+def _check_time_stamps(path: Path, header: Header) -> None:
+    if header.discontinuous and not header.annotation_signals:
+        found = f"a discontinuous file ({header.container}+D) without the time stamps of its data records"
+        remedy = "Export the file anew from the recorder: where its gaps lie cannot be told."
+        raise refusal(path, found, f"a signal {header.container} Annotations", remedy)
+
+
+def _start(main: bytes) -> str:
+    written = f"{as_text(main[168:176])} {as_text(main[176:184])}"
+    return written if _DATE_AND_TIME.fullmatch(main[168:184]) else f"{written} (no valid date and time)"
 
 
 def _signals(path: Path, fields: bytes, n_signals: int, sample_bytes: int) -> tuple[SignalHeader, ...]:
@@ -252,12 +363,15 @@ def _signals(path: Path, fields: bytes, n_signals: int, sample_bytes: int) -> tu
         place += width * n_signals
     signals = []
     stop_byte = 0
-    for label, _, unit, low, high, digital_low, digital_high, _, n_samples, _ in zip(*columns, strict=True):
+    for label, _, unit, low, high, digital_low, digital_high, prefilter, n_samples, _ in zip(
+        *columns, strict=True
+    ):
         name = as_text(label)
         samples_per_record = _whole(path, n_samples, f"the samples per record of {name}", at_least=1)
         first_byte, stop_byte = stop_byte, stop_byte + samples_per_record * sample_bytes
         texts = (as_text(low), as_text(high), as_text(digital_low), as_text(digital_high))
-        signals.append(SignalHeader(name, as_text(unit), texts, samples_per_record, first_byte, stop_byte))
+        place_in_record = samples_per_record, first_byte, stop_byte
+        signals.append(SignalHeader(name, as_text(unit), texts, *place_in_record, as_text(prefilter)))
     return tuple(signals)
 
 
@@ -266,13 +380,3 @@ def _check_duration(path: Path, header: Header) -> None:
     if header.record_s < 0 or (header.record_s == 0 and header.channels):
         found = f"data records of {float(header.record_s):g} s"
         raise refusal(path, found, "a duration above 0 s", "The header is damaged: restore the original.")
-
-
-def _check_size(path: Path, header: Header, n_bytes: int) -> None:
-    expected = header.header_bytes + header.n_records * header.record_bytes
-    if n_bytes != expected:
-        fault = f"{expected - n_bytes} bytes are missing" if n_bytes < expected else "bytes trail behind"
-        n_records = (n_bytes - header.header_bytes) / header.record_bytes
-        found = f"{n_bytes} bytes, that is {n_records:.6g} data records ({fault})"
-        allowed = f"{expected} bytes, for the header says {header.n_records} data records"
-        raise refusal(path, found, allowed, "Copy the file again or export it anew: nothing is repaired.")

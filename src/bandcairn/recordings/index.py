@@ -7,7 +7,7 @@ import json
 import os
 import tempfile
 import time
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import lru_cache
 from pathlib import Path
@@ -15,12 +15,12 @@ from typing import Any
 
 from bandcairn.errors import RecordingError
 from bandcairn.recordings.content import CONTENT_FORMAT, ChannelContent, FileContent, content_digests
-from bandcairn.recordings.reading import inspect
-from bandcairn.recordings.refusal import refusal, unreadable
-from bandcairn.signal import Annotation, ChannelFacts, FileFacts
+from bandcairn.recordings.reading import inspect, state_of
+from bandcairn.recordings.refusal import refusal
+from bandcairn.signal import Annotation, ChannelFacts, FileDetails, FileFacts, Gap, Repair
 
 # Raised whenever what is remembered, or the reading it comes from, changes.
-_INDEX_FORMAT = f"1.{CONTENT_FORMAT}"
+_INDEX_FORMAT = f"2.{CONTENT_FORMAT}"
 # A file may change twice within one tick of the file system's clock, and look unchanged. Ticks are a few
 # milliseconds on the usual file systems (from memory); a file must be older than this to be trusted.
 _RACY_NS = 100_000_000
@@ -43,7 +43,7 @@ class _State:
     Attributes
     ----------
     mark : list of int
-        Size, time of modification and time of change of status in ns, as JSON holds them.
+        Size, time of modification and time of change of status in ns of each of its files, as JSON holds them.
     settled : bool
         Whether the file was old enough, when looked at, for its times to tell any later change.
     """
@@ -63,7 +63,7 @@ class RawIndex:
     index_path : Path
         Where `save` writes.
     entries : dict
-        By path relative to the study folder: the state as three numbers, facts and digests as texts.
+        By path relative to the study folder: the state as numbers, facts and digests as texts.
     """
 
     def __init__(self, index_path: Path, entries: dict[str, Any]) -> None:
@@ -163,12 +163,9 @@ class RawIndex:
 
 
 def _state(path: Path) -> _State:
-    try:
-        status = path.stat()
-    except OSError as error:
-        raise unreadable(path, error) from error
-    settled = time.time_ns() - max(status.st_mtime_ns, status.st_ctime_ns) >= _RACY_NS
-    return _State([status.st_size, status.st_mtime_ns, status.st_ctime_ns], settled)
+    mark = state_of(path)
+    latest = max(value for index, value in enumerate(mark) if index % 3)
+    return _State(list(mark), time.time_ns() - latest >= _RACY_NS)
 
 
 def _name(path: Path, root: Path) -> str:
@@ -190,25 +187,47 @@ def _write_whole(target: Path, content: str) -> None:
         raise
 
 
-def _encode_facts(facts: FileFacts) -> str:
+def _encode_facts(facts: FileFacts) -> list[str]:
+    """Return two texts: what recordings built alike share, and what is each one's own."""
     channels = [
-        [one.label, None if one.rate_hz is None else str(one.rate_hz), one.unit, one.n_samples]
+        [one.label, None if one.rate_hz is None else str(one.rate_hz), one.unit, one.n_samples, one.prefilter]
         for one in facts.channels
     ]
     annotations = [[one.onset_s, one.duration_s, one.text] for one in facts.annotations]
-    return json.dumps([channels, annotations], separators=(",", ":"))
+    repair = facts.repair
+    details = facts.details
+    shared = [
+        channels,
+        annotations,
+        None if facts.duration_s is None else str(facts.duration_s),
+        [[str(gap.start_s), str(gap.stop_s)] for gap in facts.gaps],
+        None if repair is None else [repair.n_records_header, repair.n_records_found, repair.bytes_dropped],
+        [details.format, details.encoding, str(details.start_offset_s), details.layout, details.left_out],
+    ]
+    return [json.dumps(shared, separators=(",", ":")), details.start]
+
+
+def _decode_facts(entry: list[str]) -> FileFacts:
+    shared, start = entry
+    facts = _decode_shared(shared)
+    return replace(facts, details=replace(facts.details, start=start)) if start else facts
 
 
 # Recordings of one study are mostly built alike: equal texts share one result.
 @lru_cache(maxsize=1024)
-def _decode_facts(text: str) -> FileFacts:
-    channels, annotations = json.loads(text)
+def _decode_shared(text: str) -> FileFacts:
+    channels, annotations, duration_s, gaps, repair, details = json.loads(text)
+    form, encoding, start_offset_s, layout, left_out = details
     return FileFacts(
         channels=tuple(
-            ChannelFacts(label, None if rate_hz is None else Fraction(rate_hz), unit, n_samples)
-            for label, rate_hz, unit, n_samples in channels
+            ChannelFacts(label, None if rate_hz is None else Fraction(rate_hz), unit, n_samples, prefilter)
+            for label, rate_hz, unit, n_samples, prefilter in channels
         ),
         annotations=tuple(Annotation(*row) for row in annotations),
+        duration_s=None if duration_s is None else Fraction(duration_s),
+        gaps=tuple(Gap(Fraction(start_s), Fraction(stop_s)) for start_s, stop_s in gaps),
+        repair=None if repair is None else Repair(*repair),
+        details=FileDetails(form, encoding, "", Fraction(start_offset_s), layout, tuple(left_out)),
     )
 
 

@@ -60,33 +60,35 @@ class RawSignal:
         return Signal(samples=scaled, rate_hz=self.rate_hz, channels=self.labels, runs=self.runs)
 
 
-def cut(path: Path, n_samples: int, rate_hz: Fraction, start_s: float | None, stop_s: float | None) -> Run:
-    """Return the samples of the stretch from `start_s` up to `stop_s`.
+def cut(
+    path: Path, runs: tuple[Run, ...], rate_hz: Fraction, start_s: float | None, stop_s: float | None
+) -> tuple[Run, ...]:
+    """Return what the stretch from `start_s` up to `stop_s` holds of every run.
 
     Parameters
     ----------
     path : Path
         Named in the refusal.
-    n_samples : int
-        Samples in the file.
+    runs : tuple of Run
+        Gap-free runs that tile the samples of the file.
     rate_hz : Fraction
         Sampling rate.
     start_s, stop_s : float or None
-        Seconds from the first sample of the file; None for its start and its end. Sample k lies at k / rate:
-        the stretch holds those with start <= time < stop. The decimals as written count, not their
-        nearest binary numbers: 0.1 s at 10 Hz is sample 1.
+        Seconds from the first sample of the file; None for its start and its end. Sample k of a run lies at its
+        start + k / rate: the stretch holds those with start <= time < stop. The decimals as written count, not
+        their nearest binary numbers: 0.1 s at 10 Hz is sample 1.
 
     Returns
     -------
-    Run
-        Indices into the samples of the file.
+    tuple of Run
+        Indices into the samples of the file, one range without a hole.
 
     Raises
     ------
     RecordingError
         If the stretch reaches beyond the file or holds no sample.
     """
-    length_s = n_samples / rate_hz
+    length_s = runs[-1].start_s + runs[-1].n_samples / rate_hz
     start = Fraction(0) if start_s is None else _as_written(start_s)
     stop = length_s if stop_s is None else _as_written(stop_s)
     found = f"a cut from {start_s or 0} s to {'the end' if stop_s is None else f'{stop_s} s'}"
@@ -94,11 +96,24 @@ def cut(path: Path, n_samples: int, rate_hz: Fraction, start_s: float | None, st
     if start is None or stop is None or not 0 <= start < stop <= length_s:
         allowed = f"0 <= start < stop <= {float(length_s):.9g} s, the length of the file"
         raise refusal(path, found, allowed, remedy)
-    first, end = math.ceil(start * rate_hz), math.ceil(stop * rate_hz)
-    if first >= end:
+    held = tuple(piece for run in runs if (piece := _held(run, rate_hz, start, stop)).n_samples > 0)
+    if not held:
         found += f", without a sample at {float(rate_hz):g} Hz"
         raise refusal(path, found, "one sample or more", remedy)
-    return Run(first=first, stop=end, start_s=first / rate_hz)
+    return held
+
+
+def counted_from_zero(runs: tuple[Run, ...]) -> tuple[Run, ...]:
+    """Return neighbouring runs with their indices counted from the first of them."""
+    first = runs[0].first
+    return tuple(Run(run.first - first, run.stop - first, run.start_s) for run in runs)
+
+
+def _held(run: Run, rate_hz: Fraction, start: Fraction, stop: Fraction) -> Run:
+    before = max(0, math.ceil((start - run.start_s) * rate_hz))
+    first = run.first + before
+    end = min(run.stop, run.first + math.ceil((stop - run.start_s) * rate_hz))
+    return Run(first, end, run.start_s + before / rate_hz)
 
 
 def _as_written(seconds: float) -> Fraction | None:

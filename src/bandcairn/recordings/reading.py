@@ -2,30 +2,58 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Literal
 
-from bandcairn.recordings import delimited, edf
-from bandcairn.recordings.refusal import refusal
+from bandcairn.recordings import converted, delimited, edf, parquet
+from bandcairn.recordings.brainvision import companions_of
+from bandcairn.recordings.refusal import refusal, unreadable
+from bandcairn.recordings.table import inspect_table, read_table
 
 if TYPE_CHECKING:
     from pathlib import Path
 
     from bandcairn.recordings.declared import Declared
     from bandcairn.recordings.raw import RawSignal
+    from bandcairn.recordings.table import Table
     from bandcairn.signal import FileFacts
 
 _EDF_SUFFIXES = (".edf", ".bdf")
-_DELIMITED_SUFFIXES = (".csv", ".tsv")
-SUFFIXES = _EDF_SUFFIXES + _DELIMITED_SUFFIXES
+_TABLE_SUFFIXES = (".csv", ".tsv", ".parquet")
+SUFFIXES = (*_EDF_SUFFIXES, *_TABLE_SUFFIXES, *converted.CONVERTED_SUFFIXES)
 
 
-def is_delimited(path: Path) -> bool:
-    """Return whether `path` is delimited text rather than EDF or BDF; refused if it is neither."""
+def family_of(path: Path) -> Literal["edf", "table", "converted"]:
+    """Return how `path` is read, by its suffix; refused if there is no way."""
     suffix = path.suffix.lower()
-    if suffix not in SUFFIXES:
-        found = f"the suffix {path.suffix or '(none)'}"
-        raise refusal(path, found, ", ".join(SUFFIXES), "Export the recording in one of these formats.")
-    return suffix in _DELIMITED_SUFFIXES
+    if suffix in _EDF_SUFFIXES:
+        return "edf"
+    if suffix in _TABLE_SUFFIXES:
+        return "table"
+    if suffix in converted.CONVERTED_SUFFIXES:
+        return "converted"
+    found = f"the suffix {path.suffix or '(none)'}"
+    raise refusal(path, found, ", ".join(SUFFIXES), "Export the recording in one of these formats.")
+
+
+def open_table(path: Path) -> Table:
+    """Open delimited text or Parquet."""
+    return parquet.open_parquet(path) if path.suffix.lower() == ".parquet" else delimited.open_delimited(path)
+
+
+def state_of(path: Path) -> tuple[int, ...]:
+    """Return size and times (of modification and of change of status, in ns) of all files of a recording.
+
+    Raises
+    ------
+    RecordingError
+        If it is not there.
+    """
+    try:
+        parts = (path, *companions_of(path)) if path.suffix.lower() == ".vhdr" else (path,)
+        stats = [part.stat() for part in parts]
+    except OSError as error:
+        raise unreadable(path, error) from error
+    return tuple(value for one in stats for value in (one.st_size, one.st_mtime_ns, one.st_ctime_ns))
 
 
 def inspect(path: Path) -> FileFacts:
@@ -34,21 +62,25 @@ def inspect(path: Path) -> FileFacts:
     Parameters
     ----------
     path : Path
-        ``.edf``, ``.bdf``, ``.csv`` or ``.tsv``, in any case.
+        With one of `SUFFIXES`, in any case.
 
     Returns
     -------
     FileFacts
-        Annotation channels and the Status channel of BDF are left out. Delimited text states a rate only
-        by a column ``time_s``, and no unit.
+        Annotation, status and trigger channels are left out. Delimited text and Parquet state a rate only
+        by a column ``time_s``, and no unit. A size that does not fit the header of an EDF or BDF file is told,
+        and refused by `read` past a share.
 
     Raises
     ------
     RecordingError
         If the file cannot be read or contradicts itself.
     """
-    if is_delimited(path):
-        return delimited.inspect_delimited(path)
+    family = family_of(path)
+    if family == "table":
+        return inspect_table(open_table(path))
+    if family == "converted":
+        return converted.inspect_converted(path)
     return edf.inspect_edf(path)
 
 
@@ -60,25 +92,28 @@ def read(
     Parameters
     ----------
     path : Path
-        ``.edf``, ``.bdf``, ``.csv`` or ``.tsv``, in any case.
+        With one of `SUFFIXES`, in any case.
     labels : tuple of str
         Channels as the file names them; at least one.
     declared : Declared
-        Rate and unit of delimited text; EDF and BDF state theirs, and the declaration is not looked at.
+        What the study says where the file does not. Rates and known units of EDF and BDF are their own.
     start_s, stop_s : float or None
-        Cut, in seconds from the first sample: samples with start <= time < stop. None: from the start, to
-        the end.
+        Cut, in seconds from the first sample, gaps included: samples with start <= time < stop. None: from the
+        start, to the end.
 
     Returns
     -------
     RawSignal
-        Values as stored, with gain and offset to microvolt.
+        Values as stored, with gain and offset to microvolt; a gap ends a run.
 
     Raises
     ------
     RecordingError
         If the file, a channel, a unit, a rate, a value or the cut is at fault; nothing is adjusted.
     """
-    if is_delimited(path):
-        return delimited.read_delimited(path, labels, declared, start_s, stop_s)
-    return edf.read_edf(path, labels, start_s, stop_s)
+    family = family_of(path)
+    if family == "table":
+        return read_table(open_table(path), labels, declared, start_s, stop_s)
+    if family == "converted":
+        return converted.read_converted(path, labels, start_s, stop_s)
+    return edf.read_edf(path, labels, declared, start_s, stop_s)

@@ -57,8 +57,29 @@ def each_block(
         raise unreadable(path, error) from error
 
 
+def each_byte_block(path: Path, first_byte: int = 0) -> Iterator[bytes]:
+    """Yield the bytes of a file from `first_byte` on, in blocks."""
+    try:
+        with path.open("rb") as file:
+            file.seek(first_byte)
+            while block := file.read(_BLOCK_BYTES):
+                yield block
+    except OSError as error:
+        raise unreadable(path, error) from error
+
+
 def bytes_of(block: NDArray[np.uint8], signal: SignalHeader) -> NDArray[np.uint8]:
     """Return the bytes of `signal` in a block of records, shape (n_records, n_bytes), contiguous."""
     import numpy as np
 
     return np.ascontiguousarray(block[:, signal.first_byte : signal.stop_byte])
+
+
+def numbered_header(path: Path, header: Header, n_records: int) -> bytes:
+    """Return the bytes of the header, with `n_records` as the number of data records."""
+    try:
+        with path.open("rb") as file:
+            content = file.read(header.header_bytes)
+    except OSError as error:
+        raise unreadable(path, error) from error
+    return content[:236] + str(n_records).encode().ljust(8) + content[244:]
