@@ -329,10 +329,12 @@ def summary_of_column(column: NDArray[Any] | tuple[str | None, ...]) -> Iterator
 
 
 def summary_of_fact(value: object, name: str) -> Iterator[tuple[str, float | str]]:
-    """Yield every number and text of the facts with its path."""
+    """Yield every number and text of the facts with its path; of long lists of numbers what a column yields."""
     if isinstance(value, dict):
         for key, item in value.items():
             yield from summary_of_fact(item, f"{name}.{key}")
+    elif isinstance(value, list) and len(value) > MOST_VALUES:
+        yield from ((f"{name}, {what}", told) for what, told in summary_of_column(np.array(value)))
     elif isinstance(value, (list, tuple)):
         for index, item in enumerate(value):
             yield from summary_of_fact(item, f"{name}[{index}]")

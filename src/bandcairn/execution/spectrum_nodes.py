@@ -22,6 +22,7 @@ from bandcairn.steps.epoch import TOO_FLAT, TOO_LARGE, Reject, Segment, cut_epoc
 from bandcairn.steps.features import stack_channels
 from bandcairn.steps.heart import NO_TACHOGRAM, heart_band_features, heart_features, tachogram
 from bandcairn.steps.spectrum import power_density
+from bandcairn.steps.stop_bands import note_stop_bands
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
@@ -83,7 +84,9 @@ def _eeg_spectra(parents: Mapping[str, Frame], options: Mapping[str, Any]) -> Fr
         channel: np.stack([_mean_density(density[row], epochs.kept[row] & here) for here in of_segment])
         for row, channel in enumerate(signal.channels)
     }
-    return spectra_to_frame(means, step_hz, rows="segments")
+    # What the filter stops is no matter of the spectrum, but of those who read it.
+    stopped = {name: fact for name, fact in parents["signal"].facts.items() if name == "stop_bands_hz"}
+    return spectra_to_frame(means, step_hz, rows="segments", **stopped)
 
 
 def _mean_density(density: NDArray[np.float64], used: NDArray[np.bool_]) -> NDArray[np.float64]:
@@ -167,7 +170,10 @@ def _eeg_values(
     frequencies_hz = next(iter(spectra.values())).frequencies_hz
     density = np.stack([spectrum.density[segment.index] for spectrum in spectra.values()])
     bands_hz = {name: tuple(edges) for name, edges in parameters["bands_hz"].items()}
-    return eeg_features(frequencies_hz, density, bands_hz, _total_hz(parameters))
+    total_hz = _total_hz(parameters)
+    values = eeg_features(frequencies_hz, density, bands_hz, total_hz)
+    stopped = tuple((low_hz, high_hz) for low_hz, high_hz in parents["spectrum"].facts.get("stop_bands_hz", []))
+    return note_stop_bands(values, bands_hz, total_hz, stopped)
 
 
 def _total_hz(parameters: Mapping[str, Any]) -> tuple[float, float]:

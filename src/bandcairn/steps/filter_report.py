@@ -27,8 +27,8 @@ if TYPE_CHECKING:
 
 CURVE_POINTS = 512
 CURVE_FROM_HZ = 0.1
-# A zero of the response has no decibels: the gain of every frequency is told down to here.
-LOWEST_GAIN_DB = -300.0
+# A zero of the response has no decibels, and what rounding leaves of it means nothing.
+LOWEST_GAIN_DB = -200.0
 # Both, wherever the study was recorded: what is kept of a filter is the same for the same filter.
 MAINS_HZ = (50.0, 60.0)
 
@@ -149,14 +149,14 @@ def curve(stages: tuple[FilterStage, ...], rate_hz: float) -> Curve:
     Returns
     -------
     Curve
-        Gains no lower than -300 dB.
+        Gains no lower than -200 dB.
     """
     lowest_hz = min(
         [cutoff.requested_hz / 10 for cutoff in effective_cutoffs(stages, rate_hz)], default=math.inf
     )
     grid = np.geomspace(min(CURVE_FROM_HZ, lowest_hz), rate_hz / 2, CURVE_POINTS)
     frequency_hz = np.array([float(f"{value:.6g}") for value in grid])
-    return Curve(frequency_hz, np.round(_decibel(response(stages, rate_hz, frequency_hz)), 4) + 0.0)
+    return Curve(frequency_hz, _decibel(response(stages, rate_hz, frequency_hz)))
 
 
 def stop_bands(stages: tuple[FilterStage, ...], rate_hz: float) -> tuple[tuple[float, float], ...]:
@@ -231,4 +231,5 @@ def _gains(stage: FilterStage, rate_hz: float, frequencies_hz: list[float]) -> t
 
 
 def _decibel(gain: NDArray[np.float64]) -> NDArray[np.float64]:
-    return np.asarray(20 * np.log10(np.maximum(gain, 10 ** (LOWEST_GAIN_DB / 20))))
+    """Return a gain in dB, to 0.0001 dB: further digits would tell processors apart, not filters."""
+    return np.round(20 * np.log10(np.maximum(gain, 10 ** (LOWEST_GAIN_DB / 20))), 4) + 0.0

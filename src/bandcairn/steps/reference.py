@@ -139,7 +139,7 @@ def rereference(signal: Signal, derivation: Derivation) -> Signal:
     for target, weights in zip(samples, derivation.weights, strict=True):
         for weight, source in zip(weights, signal.samples, strict=True):
             if weight:
-                target += weight * source
+                np.add(target, weight * source, out=target)
     return Signal(samples, signal.rate_hz, derivation.channels, signal.runs)
 
 
