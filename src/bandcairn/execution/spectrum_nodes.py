@@ -172,7 +172,9 @@ def _eeg_values(
     bands_hz = {name: tuple(edges) for name, edges in parameters["bands_hz"].items()}
     total_hz = _total_hz(parameters)
     values = eeg_features(frequencies_hz, density, bands_hz, total_hz)
-    stopped = tuple((low_hz, high_hz) for low_hz, high_hz in parents["spectrum"].facts.get("stop_bands_hz", []))
+    stopped = tuple(
+        (low_hz, high_hz) for low_hz, high_hz in parents["spectrum"].facts.get("stop_bands_hz", [])
+    )
     return note_stop_bands(values, bands_hz, total_hz, stopped)
 
 
