@@ -9,7 +9,7 @@ from typing import Protocol, runtime_checkable
 
 import typer
 
-from bandcairn.cli import check, demo, plan, prune, run
+from bandcairn.cli import check, demo, new, plan, prune, run
 from bandcairn.cli.console import DONE, FAULT, INTERRUPTED, STUDY_AT_FAULT, print_error
 from bandcairn.errors import BandcairnError, DamagedNodeError, EngineError
 
@@ -23,7 +23,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     add_completion=True,
 )
-for module in (demo, check, plan, run, prune):
+for module in (demo, new, check, plan, run, prune):
     module.register(app)
 
 
