@@ -340,16 +340,18 @@ class TestPlanForPeople:
         assert duration(seconds) == words
 
 
-def test_check_marks_defaults_and_its_output_is_a_study(
-    study: Path, capfd: pytest.CaptureFixture[str]
+def test_check_prints_the_study_in_full_with_its_defaults_marked(
+    study: Path, edit_study: Callable[..., None], capfd: pytest.CaptureFixture[str]
 ) -> None:
-    """`check` prints the study in full; taken as study.yaml, its text means the same study."""
+    """`check` prints every key; its text, taken as study.yaml, means the same study."""
+    edit_study(study, "spectrum: {method: periodogram}", "spectrum: {method: welch, segment_s: 0.5}")
     code, out, err = _told(capfd, "check", str(study))
     assert (code, err) == (0, "")
     assert "on_failure: exclude  # default" in out
     assert "mains_hz: 50\n" in out
+    described = _json(capfd, "check", str(study))
     (study / "study.yaml").write_text(out, "utf-8")
-    assert _told(capfd, "plan", str(study))[1].startswith("nothing to compute")
+    assert _json(capfd, "check", str(study)) == described
 
 
 @pytest.mark.parametrize(

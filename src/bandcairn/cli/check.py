@@ -53,7 +53,8 @@ def _entry(name: str, value: Any, indent: str, mark: str) -> list[str]:  # noqa:
 
     below = f"{indent}  "
     if isinstance(value, BaseModel):
-        return [f"{indent}{name}:{mark}", *described(value, below)]
+        lines = described(value, below)
+        return [f"{indent}{name}:{mark}", *lines] if lines else [f"{indent}{name}: {{}}{mark}"]
     if isinstance(value, dict) and any(isinstance(item, BaseModel) for item in value.values()):
         return [
             f"{indent}{name}:",
