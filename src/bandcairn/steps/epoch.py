@@ -1,52 +1,87 @@
-"""Cut a signal into windows of one length, and mark those that are too large or too flat."""
+"""Cut a signal into windows of one length, and mark those that are not used."""
 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
-from fractions import Fraction
-from typing import TYPE_CHECKING, Literal
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
 import numpy as np
 
-from bandcairn.errors import StepError
+from bandcairn.steps.rejection import AT_EDGE, BY_DECISION, KEPT, Reject, check_limits, judge
+from bandcairn.steps.windows import Around, Layout, Segment, about_events, evenly, held
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
-
     from numpy.typing import NDArray
 
-    from bandcairn.signal import Run, Signal
+    from bandcairn.signal import Signal
 
-KEPT, TOO_LARGE, TOO_FLAT = 0, 1, 2
+__all__ = [
+    "Around",
+    "BadStretch",
+    "EdgeZone",
+    "Epochs",
+    "LeftOut",
+    "Reject",
+    "Segment",
+    "cut_around",
+    "cut_epochs",
+    "epoch_view",
+]
 
 
 @dataclass(frozen=True, slots=True)
-class Segment:
-    """A named stretch of a recording, in seconds from the start of the file."""
-
-    name: str
-    start_s: float
-    stop_s: float
-
-
-@dataclass(frozen=True, slots=True)
-class Reject:
-    """Limits beyond which an epoch is not used.
+class EdgeZone:
+    """What a filter leaves unsettled of every run.
 
     Attributes
     ----------
-    peak_to_peak_uv : float or None
-        An epoch whose range exceeds it is too large.
-    flat_uv : float or None
-        An epoch whose range is below it is too flat.
-    scope : {"channel", "epoch"}
-        Whether an epoch is dropped for the channel that fails, or then for all channels.
+    start_samples, stop_samples : int
+        Behind the beginning of a run, and before its end.
+    at_start, at_stop : bool
+        Whether that holds of the beginning of the first run and of the end of the last one too.
     """
 
-    peak_to_peak_uv: float | None = None
-    flat_uv: float | None = None
-    scope: Literal["channel", "epoch"] = "channel"
+    start_samples: int = 0
+    stop_samples: int = 0
+    at_start: bool = False
+    at_stop: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class BadStretch:
+    """A stretch that someone has decided to leave out, in seconds from the start of the file.
+
+    Attributes
+    ----------
+    start_s, stop_s : float
+        Epochs that hold a sample of it are dropped: from the first one at or after its start up to its stop.
+    channels : tuple of str
+        Of these channels.
+    """
+
+    start_s: float
+    stop_s: float
+    channels: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class LeftOut:
+    """What is left out whatever the samples are.
+
+    Attributes
+    ----------
+    edges : EdgeZone
+        Of every run.
+    stretches : tuple of BadStretch
+        By decision.
+    channels : tuple of str
+        Channels left out as a whole by decision.
+    """
+
+    edges: EdgeZone = EdgeZone()
+    stretches: tuple[BadStretch, ...] = ()
+    channels: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -66,7 +101,13 @@ class Epochs:
     peak_to_peak_uv : ndarray of float64, shape (n_channels, n_epochs)
         Largest minus smallest sample.
     reason : ndarray of int8, shape (n_channels, n_epochs)
-        0 kept, 1 range above the limit, 2 range below the limit.
+        0 kept, else one of `rejection.REASONS`.
+    step_uv : ndarray of float64, shape (n_channels, n_epochs), or None
+        Largest difference of neighbouring samples; None where nothing depends on it.
+    no_window : dict of str to int
+        By segment, the events whose window crosses a gap or a border, and so does not exist.
+    largest_shift_s : float
+        Largest distance of an event from its sample; 0 where there are no events.
     """
 
     first: NDArray[np.int64]
@@ -75,6 +116,9 @@ class Epochs:
     length: int
     peak_to_peak_uv: NDArray[np.float64]
     reason: NDArray[np.int8]
+    step_uv: NDArray[np.float64] | None = None
+    no_window: dict[str, int] = field(default_factory=dict)
+    largest_shift_s: float = 0.0
 
     @property
     def kept(self) -> NDArray[np.bool_]:
@@ -83,22 +127,14 @@ class Epochs:
         return kept
 
 
-@dataclass(frozen=True, slots=True)
-class _Stretch:
-    """Windows that lie evenly spaced within one run and one segment."""
-
-    segment: str
-    run: Run
-    first: int
-    count: int
-
-
 def cut_epochs(
     signal: Signal,
     length_s: float,
     overlap: float,
     segments: tuple[Segment, ...] = (),
     reject: Reject | None = None,
+    *,
+    left_out: LeftOut = LeftOut(),
 ) -> Epochs:
     """Cut fixed windows out of every segment, never across the end of a run or of a segment.
 
@@ -120,7 +156,9 @@ def cut_epochs(
     segments : tuple of Segment
         In the order of the epochs; they may overlap. None given: each run as a whole, under an empty name.
     reject : Reject or None
-        None keeps every epoch.
+        None keeps every epoch but those of `left_out`.
+    left_out : LeftOut
+        Epochs that are dropped for where they lie. They are laid and counted all the same.
 
     Returns
     -------
@@ -132,27 +170,42 @@ def cut_epochs(
     StepError
         If a length, overlap, segment or limit is out of its range.
     """
-    length, step = _window_samples(signal.rate_hz, length_s, overlap)
-    _check_segments(segments)
-    _check_limits(reject)
-    stretches = tuple(_stretches(signal, length, step, segments))
-    first = np.concatenate(
-        [np.empty(0, np.int64)] + [part.first + step * np.arange(part.count) for part in stretches]
-    )
-    peak_to_peak_uv = np.empty((len(signal.channels), len(first)))
-    filled = 0
-    for part in stretches:
-        here = slice(part.first, part.first + step * (part.count - 1) + length)
-        peak_to_peak_uv[:, filled : filled + part.count] = _ranges(signal.samples[:, here], length, step)
-        filled += part.count
-    return Epochs(
-        first=first,
-        start_s=_start_times(stretches, signal.rate_hz, step),
-        segment=tuple(part.segment for part in stretches for _ in range(part.count)),
-        length=length,
-        peak_to_peak_uv=peak_to_peak_uv,
-        reason=_reasons(peak_to_peak_uv, reject),
-    )
+    return _cut(signal, evenly(signal, length_s, overlap, segments), reject, left_out)
+
+
+def cut_around(
+    signal: Signal,
+    around: Around,
+    segments: tuple[Segment, ...] = (),
+    reject: Reject | None = None,
+    *,
+    left_out: LeftOut = LeftOut(),
+) -> Epochs:
+    """Cut one window about every event, never across the end of a run or of a segment.
+
+    An event belongs to its nearest sample, and every window begins round(start_s * rate) samples after that and holds
+    round((stop_s - start_s) * rate) of them (halves go to the even number): the event has the same place in all.
+
+    Parameters
+    ----------
+    signal : Signal
+        Finite samples; not modified.
+    around : Around
+        Where a window begins and ends, and the events.
+    segments, reject, left_out
+        As in `cut_epochs`.
+
+    Returns
+    -------
+    Epochs
+        Segment by segment in the order of the events. Events without a whole window are counted.
+
+    Raises
+    ------
+    StepError
+        If the window holds no sample, or a segment or limit is out of its range.
+    """
+    return _cut(signal, about_events(signal, around, segments), reject, left_out)
 
 
 def epoch_view(samples: NDArray[np.float64], epochs: Epochs) -> NDArray[np.float64]:
@@ -180,76 +233,57 @@ def epoch_view(samples: NDArray[np.float64], epochs: Epochs) -> NDArray[np.float
     return _windows(samples[:, first[0] : first[-1] + epochs.length], epochs.length, step)
 
 
-def _window_samples(rate_hz: Fraction, length_s: float, overlap: float) -> tuple[int, int]:
-    """Return length and step of the windows in samples."""
-    if not (math.isfinite(length_s) and 0 <= overlap < 1):
-        raise StepError(f"epoch: found length_s {length_s} and overlap {overlap}; allowed: 0 <= overlap < 1.")
-    length = round(_seconds(length_s) * rate_hz)
-    step = round(length * (1 - _seconds(overlap)))
-    if length < 1 or step < 1:
-        raise StepError(
-            f"epoch: windows of {length_s:g} s with an overlap of {overlap:g} are {length} samples long "
-            f"and {step} apart at {float(rate_hz):g} Hz; allowed: at least 1 of each. Choose longer "
-            "windows or less overlap."
-        )
-    return length, step
+def _cut(signal: Signal, layout: Layout, reject: Reject | None, left_out: LeftOut) -> Epochs:
+    check_limits(reject)
+    first = layout.first
+    shape = (len(signal.channels), len(first))
+    peak_to_peak_uv = np.empty(shape)
+    step_uv = None if reject is None or reject.step_uv is None else np.empty(shape)
+    filled = 0
+    for row in layout.rows:
+        here = signal.samples[:, row.first : row.first + layout.step * (row.count - 1) + layout.length]
+        rows = slice(filled, filled + row.count)
+        peak_to_peak_uv[:, rows] = _ranges(here, layout.length, layout.step)
+        if step_uv is not None:
+            step_uv[:, rows] = _steepest(here, layout.length, layout.step)
+        filled += row.count
+    given = _left_out(signal, first, layout.length, left_out)
+    unasked = np.isin(signal.channels, left_out.channels)
+    return Epochs(
+        first=first,
+        start_s=layout.start_times(signal.rate_hz),
+        segment=layout.segment,
+        length=layout.length,
+        peak_to_peak_uv=peak_to_peak_uv,
+        reason=judge(peak_to_peak_uv, step_uv, reject, given, unasked),
+        step_uv=step_uv,
+        no_window=layout.no_window,
+        largest_shift_s=layout.largest_shift_s,
+    )
 
 
-def _seconds(decimal: float) -> Fraction:
-    """Return exactly the decimal number that was written: 0.1 is 1/10, not the nearest binary number."""
-    return Fraction(repr(float(decimal)))
-
-
-def _check_segments(segments: tuple[Segment, ...]) -> None:
-    for segment in segments:
-        if not -math.inf < segment.start_s < segment.stop_s < math.inf:
-            raise StepError(
-                f"epoch: segment {segment.name!r} runs from {segment.start_s} to {segment.stop_s} s; "
-                "allowed: a stop after the start. Correct the table of segments."
-            )
-
-
-def _check_limits(reject: Reject | None) -> None:
-    if reject is None or reject.flat_uv is None or reject.peak_to_peak_uv is None:
-        return
-    if reject.flat_uv >= reject.peak_to_peak_uv:
-        raise StepError(
-            f"epoch: found flat_uv {reject.flat_uv:g} and peak_to_peak_uv {reject.peak_to_peak_uv:g}; "
-            "allowed: flat_uv below peak_to_peak_uv, or no epoch is left. Correct one of them."
-        )
-
-
-def _stretches(signal: Signal, length: int, step: int, segments: tuple[Segment, ...]) -> Iterator[_Stretch]:
-    """Yield what each segment holds of each run, where at least one window fits."""
-    for segment in segments or (None,):
+def _left_out(signal: Signal, first: NDArray[np.int64], length: int, left_out: LeftOut) -> NDArray[np.int8]:
+    """Return why each epoch of each channel is dropped for where it lies, or 0."""
+    reason = np.zeros((len(signal.channels), len(first)), np.int8)
+    for start, stop in _edges(signal, left_out.edges):
+        reason[:, (first < stop) & (first + length > start)] = AT_EDGE
+    for stretch in left_out.stretches:
+        rows = np.isin(signal.channels, stretch.channels)
         for run in signal.runs:
-            start, stop = _held(run, signal.rate_hz, segment)
-            if stop - start >= length:
-                name = segment.name if segment else ""
-                yield _Stretch(name, run, start, (stop - start - length) // step + 1)
+            start, stop = held(run, signal.rate_hz, Segment("", stretch.start_s, stretch.stop_s))
+            if start < stop:
+                reason[np.ix_(rows, (first < stop) & (first + length > start))] = BY_DECISION
+    reason[np.isin(signal.channels, left_out.channels)] = BY_DECISION
+    return reason
 
 
-def _held(run: Run, rate_hz: Fraction, segment: Segment | None) -> tuple[int, int]:
-    """Return the half-open range of samples of a run that a segment holds."""
-    if segment is None:
-        return run.first, run.stop
-    # The first sample at or after a time is the first one not strictly before it: one rule for both ends.
-    start = run.first + math.ceil((_seconds(segment.start_s) - run.start_s) * rate_hz)
-    stop = run.first + math.ceil((_seconds(segment.stop_s) - run.start_s) * rate_hz)
-    return max(start, run.first), min(stop, run.stop)
-
-
-def _start_times(stretches: tuple[_Stretch, ...], rate_hz: Fraction, step: int) -> NDArray[np.float64]:
-    """Return the time of every window's first sample."""
-    times: list[float] = []
-    for part in stretches:
-        start = part.run.start_s + (part.first - part.run.first) / rate_hz
-        spacing = step / rate_hz
-        # Over a common denominator, each time is one division of whole numbers: rounded once, and quickly.
-        below = math.lcm(start.denominator, spacing.denominator)
-        above, more = int(start * below), int(spacing * below)
-        times.extend((above + i * more) / below for i in range(part.count))
-    return np.array(times, dtype=np.float64)
+def _edges(signal: Signal, edges: EdgeZone) -> list[tuple[int, int]]:
+    """Return the half-open ranges of samples in which the filter has not settled."""
+    runs = signal.runs
+    zones = [(run.first, min(run.first + edges.start_samples, run.stop)) for run in runs]
+    ends = [(max(run.stop - edges.stop_samples, run.first), run.stop) for run in runs]
+    used = zones[0 if edges.at_start else 1 :] + ends[: len(ends) if edges.at_stop else -1]
+    return [(start, stop) for start, stop in used if start < stop]
 
 
 def _windows(samples: NDArray[np.float64], length: int, step: int) -> NDArray[np.float64]:
@@ -269,20 +303,20 @@ def _ranges(samples: NDArray[np.float64], length: int, step: int) -> NDArray[np.
     return np.asarray(largest - smallest)
 
 
-def _reasons(peak_to_peak_uv: NDArray[np.float64], reject: Reject | None) -> NDArray[np.int8]:
-    """Return why each epoch of each channel is dropped, or 0.
+def _steepest(samples: NDArray[np.float64], length: int, step: int) -> NDArray[np.float64]:
+    """Return the largest difference of neighbouring samples of every window, 0 in a window of one sample.
 
-    With scope "epoch", a channel that passes by itself takes the reason of those that fail: too large if any
-    is.
+    Blocks as in `_ranges`. The difference from the last sample of a block to the next block's first belongs to the
+    block, but not to a window that ends there.
     """
-    reason = np.zeros(peak_to_peak_uv.shape, np.int8)
-    if reject is None:
-        return reason
-    if reject.flat_uv is not None:
-        reason[peak_to_peak_uv < reject.flat_uv] = TOO_FLAT
-    if reject.peak_to_peak_uv is not None:
-        reason[peak_to_peak_uv > reject.peak_to_peak_uv] = TOO_LARGE
-    if reject.scope == "epoch":
-        spread = np.where((reason == TOO_LARGE).any(axis=0), TOO_LARGE, reason.max(axis=0)).astype(np.int8)
-        reason = np.where(reason == KEPT, spread, reason)
-    return reason
+    block = math.gcd(length, step)
+    jumps = np.zeros(samples.shape)
+    np.abs(np.diff(samples, axis=-1), out=jumps[:, :-1])
+    steps = jumps.reshape(len(samples), -1, block)
+    inner = steps[..., :-1].max(axis=-1, initial=0)
+    n_blocks, hop = length // block, step // block
+    last = _windows(inner, n_blocks, hop)[..., -1]
+    if n_blocks == 1:
+        return np.asarray(last)
+    whole = _windows(steps.max(axis=-1), n_blocks, hop)[..., :-1].max(axis=-1)
+    return np.asarray(np.maximum(whole, last))
