@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 import pytest
 from pydantic import BaseModel
 
-from bandcairn.study import models
+from bandcairn.study import models, quality_blocks
 from bandcairn.study.blocks import Block
 from bandcairn.study.description import load_study
 from bandcairn.study.filter_blocks import FilterStage
@@ -31,7 +31,11 @@ SECTIONS: dict[str, type[BaseModel]] = {
     "A signal of kind eeg": models.EegSignal,
     "A signal of kind ecg": models.EcgSignal,
     "A signal of kind emg": models.EmgSignal,
-    "quality": models.QualityLimits,
+    "recorder": quality_blocks.Recorder,
+    "quality": quality_blocks.QualityLimits,
+    "quality of eeg": quality_blocks.EegQuality,
+    "quality of ecg": quality_blocks.EcgQuality,
+    "quality of emg": quality_blocks.EmgQuality,
     "resample": models.Resample,
     "reference, as pairs": BipolarPairs,
     "filter, each stage": FilterStage,
@@ -61,6 +65,9 @@ def shown(value: object) -> str:
     if isinstance(value, dict):
         return ", ".join(f"{name} [{low:g}, {high:g}]" for name, (low, high) in value.items())
     if isinstance(value, tuple):
+        numbers = [f"{item:g}" for item in value if isinstance(item, float)]
+        if numbers:
+            return f"[{', '.join(numbers)}]"
         return "none" if not value else ", ".join(map(str, value))
     return f"{value:g}" if isinstance(value, float) else str(value)
 

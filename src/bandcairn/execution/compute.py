@@ -6,8 +6,9 @@ import json
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.execution.filter_nodes import filter_node, reference_node
-from bandcairn.execution.group_nodes import statistics_node, table_node, verdict_node
-from bandcairn.execution.signal_nodes import load_node, quality_node, resample_node
+from bandcairn.execution.group_nodes import statistics_node, table_node
+from bandcairn.execution.quality_nodes import quality_node, verdict_node
+from bandcairn.execution.signal_nodes import load_node, resample_node
 from bandcairn.execution.spectrum_nodes import beats_node, epoch_node, features_node, spectrum_node
 
 if TYPE_CHECKING:

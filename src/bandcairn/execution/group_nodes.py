@@ -1,4 +1,4 @@
-"""Nodes of the study: verdict, table, statistics."""
+"""Nodes of the study: table, statistics."""
 
 from __future__ import annotations
 
@@ -7,7 +7,6 @@ from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
-from bandcairn.execution.signal_nodes import QUALITY_UNITS
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
@@ -16,17 +15,6 @@ if TYPE_CHECKING:
     from bandcairn.statistics import Result
     from bandcairn.store.frame import Column
 
-VERDICT_COLUMNS = {
-    "recording": "text",
-    "signal": "text",
-    "channel": "text",
-    "measure": "text",
-    "value": "number",
-    "unit": "text",
-    "limit": "number",
-    "passed": "text",
-    "node": "text",
-}
 # The features of the contract, and the counts of rejected epochs from which the exclusions are told.
 TABLE_COLUMNS = {
     "recording": "text",
@@ -44,6 +32,10 @@ TABLE_COLUMNS = {
     "note": "text",
     "node": "text",
 }
+# Measures of a range of frequencies rather than of a channel.
+OF_BANDS = ("quantisation_margin_db", "beyond_recorder_share", "recorder_loss_db")
+# Features that a rounded time of a beat leaves alone.
+_BLIND_TO_TIMING = ("heart_rate", "mean_nn", "beats", "beats_corrected")
 # Before the name of a design column, lest it meet a column of the table.
 DESIGN = "design/"
 STATISTICS_COLUMNS = {
@@ -77,65 +69,64 @@ STATISTICS_COLUMNS = {
 }
 
 
-def verdict_node(
-    parameters: Mapping[str, Any], parents: Mapping[str, Frame], keys: Mapping[str, str]
-) -> Frame:
-    """Hold every measured quality against the study's limits: one row a recording, channel and measure."""
-    limits = parameters["limits"]
-    rows: list[dict[str, Any]] = []
-    for role, frame in parents.items():
-        for index, channel in enumerate(frame.text("channel")):
-            for measure, unit in QUALITY_UNITS.items():
-                value, limit = float(frame.numbers(measure)[index]), limits.get(measure)
-                rows.append(
-                    {
-                        "recording": role.removeprefix("quality/"),
-                        "signal": parameters["signal"],
-                        "channel": channel,
-                        "measure": measure,
-                        "value": value,
-                        "unit": unit,
-                        "limit": limit,
-                        "passed": None if limit is None else "yes" if value <= limit else "no",
-                        "node": keys[role],
-                    }
-                )
-    return _frame(rows, VERDICT_COLUMNS)
-
-
 def table_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame], keys: Mapping[str, str]) -> Frame:
-    """Gather the features of all recordings; a channel beyond a quality limit keeps its row, not its value."""
-    failed = _failed_channels(parents["verdict"])
-    exclude = parameters["on_failure"] == "exclude"
+    """Gather the features of all recordings; what lies beyond a quality limit keeps its row, not its value."""
+    failures = _failures(parents["verdict"])
+    exclude = {
+        "channel": parameters["on_failure"] == "exclude",
+        "band": parameters["on_band_failure"] == "exclude",
+    }
     rows: list[dict[str, Any]] = []
     for who in parameters["rows"]:
         role = f"features/{who['recording']}"
         told_of = {"recording": who["recording"], "participant": who["participant"], "node": keys[role]}
         told_of |= {f"{DESIGN}{factor}": level for factor, level in who["design"].items()}
         for row in frame_rows(parents[role]):
-            told = failed.get((who["recording"], row["channel"]))
-            rows.append({**row, **_judged(row, told, exclude=exclude), **told_of})
+            failed = failures.get((who["recording"], row["channel"]), [])
+            mine = [failure for failure in failed if concerns(failure, row)]
+            rows.append({**row, **_judged(row, mine, exclude), **told_of})
     design = {f"{DESIGN}{factor}": "text" for factor in parameters["design"]}
-    return _frame(rows, TABLE_COLUMNS | design)
+    return rows_to_frame(rows, TABLE_COLUMNS | design)
 
 
-def _failed_channels(verdict: Frame) -> dict[tuple[str, str], str]:
-    """Return what a channel has failed in, by recording and channel."""
-    failed: dict[tuple[str, str], list[str]] = {}
+def _failures(verdict: Frame) -> dict[tuple[str, str], list[dict[str, Any]]]:
+    """Return the rows of the verdict that have failed, by recording and channel."""
+    failed: dict[tuple[str, str], list[dict[str, Any]]] = {}
     for row in frame_rows(verdict):
         if row["passed"] == "no":
-            told = f"{row['measure']} {row['value']:.3g} is above {row['limit']:g}"
-            failed.setdefault((row["recording"], row["channel"]), []).append(told)
-    return {place: ", ".join(told) for place, told in failed.items()}
+            failed.setdefault((row["recording"], row["channel"]), []).append(row)
+    return failed
 
 
-def _judged(row: Mapping[str, Any], told: str | None, *, exclude: bool) -> dict[str, Any]:
-    """Return what a failed quality changes in a row of features."""
-    if told is None:
-        return {}
-    if exclude:
-        return {"value": None, "epochs_used": 0, "note": f"left out: {told}"}
-    return {"note": "; ".join(filter(None, (row["note"], f"kept although {told}")))}
+def concerns(failure: Mapping[str, Any], feature: Mapping[str, Any]) -> bool:
+    """Tell whether a failure in quality concerns a row of features of the same channel."""
+    if failure["about"] == "band":
+        return bool(feature["band"] == failure["band"])
+    if failure["about"] == "whole range":
+        return feature["band"] is None or feature["feature"] == "relative_band_power"
+    if failure["about"] == "intervals":
+        return feature["feature"] not in _BLIND_TO_TIMING
+    return True
+
+
+def _judged(
+    row: Mapping[str, Any], failures: Sequence[Mapping[str, Any]], exclude: Mapping[str, bool]
+) -> dict[str, Any]:
+    """Return what failures in quality change in a row of features."""
+    fatal = [failure["told"] for failure in failures if exclude.get(consequence(failure), False)]
+    if fatal:
+        return {"value": None, "epochs_used": 0, "note": f"left out: {', '.join(fatal)}"}
+    if failures:
+        told = ", ".join(failure["told"] for failure in failures)
+        return {"note": "; ".join(filter(None, (row["note"], f"kept although {told}")))}
+    return {}
+
+
+def consequence(failure: Mapping[str, Any]) -> str:
+    """Return what decides about a failure: ``channel`` and ``band`` as the study says, ``advice`` never excludes."""
+    if failure["about"] == "intervals":
+        return "advice"
+    return "band" if failure["measure"].split("/")[0] in OF_BANDS else "channel"
 
 
 def statistics_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
@@ -152,7 +143,7 @@ def statistics_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame])
     for row, p_adjusted in zip(rows, adjusted, strict=True):
         row |= {"p_adjusted": p_adjusted, "adjustment": parameters["adjustment"]}
         row |= {"family": parameters["family"], "family_size": size}
-    return _frame(rows, STATISTICS_COLUMNS)
+    return rows_to_frame(rows, STATISTICS_COLUMNS)
 
 
 def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> Iterator[dict[str, Any]]:
@@ -236,7 +227,8 @@ def _plain(column: Any) -> Sequence[Any]:  # noqa: ANN401 - a column of either k
     return values
 
 
-def _frame(rows: Sequence[Mapping[str, Any]], schema: Mapping[str, str]) -> Frame:
+def rows_to_frame(rows: Sequence[Mapping[str, Any]], schema: Mapping[str, str]) -> Frame:
+    """Return rows as a frame with the columns of `schema`: name and kind, which is text, number or count."""
     return Frame({name: _COLUMNS[kind]([row[name] for row in rows]) for name, kind in schema.items()})
 
 

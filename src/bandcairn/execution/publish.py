@@ -106,7 +106,8 @@ def publish(
     -------
     Outcome
     """
-    from bandcairn.execution.group_nodes import STATISTICS_COLUMNS, VERDICT_COLUMNS
+    from bandcairn.execution.group_nodes import STATISTICS_COLUMNS
+    from bandcairn.execution.quality_nodes import VERDICT_COLUMNS
     from bandcairn.provenance.ledger import LEDGER_SCHEMA
     from bandcairn.store.tables import write_table
 
@@ -218,16 +219,26 @@ def _exclusions(
         yield _left_out((failure.recording, failure.signal), what, (1, 1), failure.sentence)
     for row in verdicts:
         if row["passed"] == "no":
-            signal = project.study.description.signals[row["signal"]]
-            what = "channel" if signal.quality.on_failure == "exclude" else "channel, kept"
-            reason = f"{row['measure']} {row['value']:.3g} is above {row['limit']:g}"
-            yield _left_out((row["recording"], row["signal"], row["channel"]), what, (1, 1), reason)
+            channel = (row["recording"], row["signal"], row["channel"])
+            yield _left_out(channel, _what_failed(project, row), (1, 1), row["told"])
     seen = set()
     for row in features:
         place = (row["recording"], row["signal"], row["channel"], row["segment"] or "")
         if place not in seen:
             seen.add(place)
             yield from _rejected_epochs(project, row, place)
+
+
+def _what_failed(project: Project, row: Mapping[str, Any]) -> str:
+    """Return what a failure in quality is of: a channel, a band or features, and whether they are kept."""
+    from bandcairn.execution.group_nodes import consequence
+
+    limits = project.study.description.signals[row["signal"]].quality
+    of = consequence(row)
+    if of == "advice":
+        return "features, kept"
+    kept = (limits.on_failure if of == "channel" else limits.on_band_failure) == "flag"
+    return f"{of}, kept" if kept else of
 
 
 def _rejected_epochs(

@@ -1,13 +1,14 @@
-"""Nodes that hold samples: load, quality, resample, filter."""
+"""Nodes that hold samples: load, resample."""
 
 from __future__ import annotations
 
+from dataclasses import replace
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.execution.frames import frame_to_signal, raw_to_frame, signal_to_frame
-from bandcairn.recordings import Declared, read
-from bandcairn.steps.quality import assess
+from bandcairn.recordings import MAX_MISSING_SHARE, Declared, read
+from bandcairn.signal import Repair
 from bandcairn.steps.resample import resample
 from bandcairn.store.frame import Frame
 
@@ -15,32 +16,36 @@ if TYPE_CHECKING:
     from collections.abc import Mapping
     from pathlib import Path
 
-# Measure of the quality node -> its unit.
-QUALITY_UNITS = {
-    "clipped_share": "1",
-    "clipped_longest_s": "s",
-    "flat_share": "1",
-    "flat_longest_s": "s",
-    "peak_to_peak_uv": "uV",
-    "rms_uv": "uV",
-}
-
 
 def load_node(parameters: Mapping[str, Any], path: Path) -> Frame:
-    """Read a signal's channels from the raw file."""
-    rate_hz = parameters.get("rate_hz")
-    declared = Declared(None if rate_hz is None else exact_rate(rate_hz), parameters.get("unit"))
+    """Read a signal's channels from the raw file; what was found amiss stands beside the samples."""
+    channels = tuple(parameters["channels"])
+    labels = tuple(parameters.get("labels", channels))
     cut = parameters.get("start_s"), parameters.get("stop_s")
-    return raw_to_frame(read(path, tuple(parameters["channels"]), declared, *cut))
+    raw = read(path, labels, _declared(parameters), *cut)
+    frame = raw_to_frame(replace(raw, labels=channels))
+    return Frame(frame.columns, {**frame.facts, **_told(parameters)})
 
 
-def quality_node(_: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
-    """Measure clipped and flat stretches of the signal as it was recorded: one row a channel."""
-    signal = frame_to_signal(parents["signal"])
-    measured = assess(signal.samples, (None,) * len(signal.channels), float(signal.rate_hz))
-    return Frame(
-        {"channel": signal.channels, **{measure: getattr(measured, measure) for measure in QUALITY_UNITS}}
+def _declared(parameters: Mapping[str, Any]) -> Declared:
+    rate_hz = parameters.get("rate_hz")
+    share = parameters.get("max_missing_share")
+    return Declared(
+        rate_hz=None if rate_hz is None else exact_rate(rate_hz),
+        unit=parameters.get("unit"),
+        unit_reason=parameters.get("unit_reason"),
+        missing_are_gaps=parameters.get("missing") == "gap",
+        max_missing_share=MAX_MISSING_SHARE if share is None else Fraction(str(share)),
     )
+
+
+def _told(parameters: Mapping[str, Any]) -> dict[str, Any]:
+    """Return what a reader of the samples must know of how they were read; nothing for a plain file."""
+    told = {name: parameters[name] for name in ("labels", "unit_reason") if name in parameters}
+    if "repair" in parameters:
+        repair = Repair(**parameters["repair"])
+        told["repairs"] = [{**parameters["repair"], "told": str(repair)}]
+    return told
 
 
 def resample_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:

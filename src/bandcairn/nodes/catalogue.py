@@ -30,7 +30,11 @@ class Step:
 # In the order of the data. The first nine act on one signal of one recording, the others on the study.
 STEPS = (
     Step("load", 1, "reads a signal's channels from the raw file at their own rate"),
-    Step("quality", 1, "measures clipped and flat stretches before anything is done to the samples"),
+    Step(
+        "quality",
+        2,
+        "measures clipping, gaps, mains, steps and amplitude before anything is done to the samples",
+    ),
     Step("resample", 1, "brings the signal to the study's rate"),
     Step("reference", 1, "measures the channels against others"),
     Step("filter", 2, "applies the filter stages in order"),
@@ -38,7 +42,7 @@ STEPS = (
     Step("epoch", 1, "lays windows and marks those to reject"),
     Step("spectrum", 1, "estimates power spectral densities"),
     Step("features", 1, "computes the features of one signal of one recording"),
-    Step("verdict", 1, "holds each channel's quality against the study's limits"),
+    Step("verdict", 2, "holds each channel's quality against the study's limits"),
     Step("table", 1, "gathers a signal's features from all recordings"),
     Step("statistics", 1, "answers the questions of one family"),
 )

@@ -6,14 +6,16 @@ any numerical library.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
 from fractions import Fraction
 from functools import cache
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.nodes.key import canonical_json
 from bandcairn.nodes.node import Node, make_node
+from bandcairn.study.facts_check import declared_unit
 from bandcairn.study.reference_blocks import BipolarPairs
+from bandcairn.study.requested_ranges import requested_ranges
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Mapping
@@ -21,6 +23,7 @@ if TYPE_CHECKING:
     from pydantic import BaseModel
 
     from bandcairn.nodes.survey import RawContent
+    from bandcairn.signal import Repair
     from bandcairn.study.description import LoadedStudy
     from bandcairn.study.filter_blocks import FilterStage
     from bandcairn.study.models import EcgSignal, EegSignal, EmgSignal, Question
@@ -168,7 +171,9 @@ class _SignalChain:
         self.reference = canonical_json(_reference_recipe(signal.reference)) if signal.reference else None
         self.spectrum = canonical_json({"kind": signal.kind, **_recipe(signal.spectrum)})
         self.features = canonical_json({"kind": signal.kind, **_recipe(signal.features)})
+        self.mains_hz = study.description.mains_hz
         self.load_parameters = cache(self._load_parameters)
+        self.quality_parameters = cache(self._quality_parameters)
         self.epoch_parameters = cache(self._epoch_parameters)
         self.segments = _segments_by_recording(study)
 
@@ -188,11 +193,12 @@ class _SignalChain:
         rate_hz, unit = self._declared_for(content)
         load = make(
             "load",
-            self.load_parameters(rate_hz, unit, row.start_s, row.stop_s),
-            raw=tuple(content.digests[channel] for channel in self.channels),
+            self.load_parameters(rate_hz, unit, row.start_s, row.stop_s, self._found_in(content)),
+            raw=tuple(content.digest_of(channel) for channel in self.channels),
         )
         yield load
-        yield make("quality", "{}", signal=load.key)
+        prefilters = tuple(content.facts_of(channel).prefilter or "" for channel in self.channels)
+        yield make("quality", self.quality_parameters(prefilters), signal=load.key)
         key = load.key
         resample = self.signal.resample
         if resample is not None and _exact(resample.rate_hz) != _exact(
@@ -230,9 +236,21 @@ class _SignalChain:
 
     def _declared_for(self, content: RawContent) -> tuple[float | None, str | None]:
         """Return the declared rate and unit where the file states none: else they are no part of the recipe."""
-        facts = content.facts_of(self.channels[0])
-        rate_hz = self.declared.rate_hz if facts.rate_hz is None else None
-        return rate_hz, self.declared.unit if facts.unit is None else None
+        channels = [content.facts_of(channel) for channel in self.channels]
+        rate_hz = self.declared.rate_hz if channels[0].rate_hz is None else None
+        units = (declared_unit(channel, content.facts, self.declared) for channel in channels)
+        return rate_hz, next(filter(None, units), None)
+
+    def _found_in(self, content: RawContent) -> _Found:
+        """Return what sets the file of a recording apart from a plain one."""
+        labels = tuple(content.label_of(channel) for channel in self.channels)
+        table = content.facts.details.format in ("delimited", "Parquet")
+        return _Found(
+            labels=labels if labels != self.channels else None,
+            missing=self.declared.missing if table and self.declared.missing == "gap" else None,
+            repair=content.facts.repair,
+            own_unit=not table and content.facts.details.format != "",
+        )
 
     def _segments(self, row: RecordingRow, content: RawContent) -> tuple[tuple[str, float, float], ...]:
         declared = self.segments.get(row.recording, ()) or content.annotated_segments
@@ -240,14 +258,62 @@ class _SignalChain:
         return tuple(segment for segment in declared if wanted is None or segment[0] in wanted)
 
     def _load_parameters(
-        self, rate_hz: float | None, unit: str | None, start_s: float | None, stop_s: float | None
+        self,
+        rate_hz: float | None,
+        unit: str | None,
+        start_s: float | None,
+        stop_s: float | None,
+        found: _Found,
     ) -> str:
-        stated = {"rate_hz": rate_hz, "unit": unit, "start_s": start_s, "stop_s": stop_s}
+        stated: dict[str, Any] = {
+            "rate_hz": rate_hz,
+            "unit": unit,
+            "start_s": start_s,
+            "stop_s": stop_s,
+            "labels": found.labels,
+            "missing": found.missing,
+            "unit_reason": self.declared.unit_reason if unit is not None and found.own_unit else None,
+        }
+        if found.repair is not None:
+            stated |= {"repair": asdict(found.repair), "max_missing_share": self.declared.max_missing_share}
         known = {name: value for name, value in stated.items() if value is not None}
         return canonical_json({"channels": self.channels, **known})
 
+    def _quality_parameters(self, prefilters: tuple[str, ...]) -> str:
+        """Return what quality is measured by: no limit is among it, so that one may change without measuring anew."""
+        stated: dict[str, Any] = {"mains_hz": self.mains_hz}
+        if any(prefilters):
+            stated["prefilter"] = prefilters
+        if self.signal.recorder is not None:
+            stated |= _recipe(self.signal.recorder)
+        if self.signal.quality.accept_other_mains is not None:
+            stated["accept_other_mains"] = self.signal.quality.accept_other_mains
+        return canonical_json(stated)
+
     def _epoch_parameters(self, segments: tuple[tuple[str, float, float], ...]) -> str:
         return canonical_json({**_recipe(self.signal.epoch), "segments": segments})
+
+
+@dataclass(frozen=True, slots=True)
+class _Found:
+    """What enters the recipe of a load only where a file is not plain: none of it moves the key of one that is.
+
+    Attributes
+    ----------
+    labels : tuple of str or None
+        Labels in the file, where the study calls a channel otherwise.
+    missing : str or None
+        ``"gap"`` where the study declares so of a table.
+    repair : Repair or None
+        What was found where the size of the file does not fit its header.
+    own_unit : bool
+        Whether the format states units, so that another one needs a reason.
+    """
+
+    labels: tuple[str, ...] | None
+    missing: str | None
+    repair: Repair | None
+    own_unit: bool
 
 
 def _exact(rate_hz: Fraction | float | None) -> Fraction:
@@ -280,14 +346,18 @@ def _signal_nodes(
             rows.append({"recording": row.recording, "participant": row.participant, "design": row.design})
             for step, key in found.items():
                 keys[step].append((f"{step}/{row.recording}", key))
-    limits = _recipe(signal.quality, exclude={"on_failure"})
     verdict = make_node(
         "verdict",
-        parameters=canonical_json({"signal": name, "limits": limits}),
+        parameters=canonical_json(_judged_by(name, signal)),
         parents=tuple(keys["quality"]),
         signal=name,
     )
-    parameters = {"design": design_columns(study), "on_failure": signal.quality.on_failure, "rows": rows}
+    parameters = {
+        "design": design_columns(study),
+        "on_failure": signal.quality.on_failure,
+        "on_band_failure": signal.quality.on_band_failure,
+        "rows": rows,
+    }
     table = make_node(
         "table",
         parameters=canonical_json(parameters),
@@ -297,6 +367,18 @@ def _signal_nodes(
     return verdict, table
 
 
+def _judged_by(name: str, signal: SignalDescription) -> dict[str, Any]:
+    """Return what a signal's quality is held against."""
+    told = {"on_failure", "on_band_failure", "accept_other_mains"}
+    judged_by = {
+        "signal": name,
+        "kind": signal.kind,
+        "limits": _recipe(signal.quality, exclude=told),
+        "bands_hz": requested_ranges(signal),
+    }
+    return judged_by if signal.resample is None else {**judged_by, "resample_hz": signal.resample.rate_hz}
+
+
 def _statistics_node(
     family: str, questions: tuple[Question, ...], study: LoadedStudy, tables: Mapping[str, Node]
 ) -> Node:
@@ -304,7 +386,9 @@ def _statistics_node(
     parameters = {
         "family": family,
         "adjustment": "holm",
-        "questions": [_question(question, signals[question.signal].measured_channels) for question in questions],
+        "questions": [
+            _question(question, signals[question.signal].measured_channels) for question in questions
+        ],
     }
     asked = sorted({question.signal for question in questions})
     return make_node(

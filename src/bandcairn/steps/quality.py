@@ -1,133 +1,266 @@
-"""Quality of acquisition: what can be said of a channel before anything is done to it."""
+"""Quality of acquisition: what can be said of a signal before anything is done to it.
+
+Nothing here knows a limit: what was measured is judged elsewhere, so that a limit may change without measuring anew.
+"""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from bandcairn.errors import StepError
+from bandcairn.steps.amplitude import amplitude
+from bandcairn.steps.clipping import Stretches, clipped, find_rests, flat
+from bandcairn.steps.mains import mains, other_line
+from bandcairn.steps.spectrum import Spectrum, power_density
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping, Sequence
+
     from numpy.typing import NDArray
 
-LEAST_CLIPPED_SAMPLES = 3
-LEAST_FLAT_S = 1.0
+    from bandcairn.signal import Run, Signal
+    from bandcairn.steps.amplitude import Amplitude
+    from bandcairn.steps.clipping import Rests
+    from bandcairn.steps.mains import Mains, MainsHz
+
+SEGMENT_S = 2
+# Segments of a longer recording are spread evenly over it: two minutes tell line and floor as well as a day.
+MOST_SEGMENTS = 60
+
+
+@dataclass(frozen=True, slots=True)
+class Gaps:
+    """What is missing between the runs of a signal.
+
+    Attributes
+    ----------
+    count : int
+        Number of gaps.
+    longest_s : float
+        Length of the longest.
+    missing_share : float
+        Missing time over the time from the first sample to the last, 0 to 1.
+    """
+
+    count: int
+    longest_s: float
+    missing_share: float
 
 
 @dataclass(frozen=True, slots=True)
 class ChannelQuality:
-    """What `assess` found; every array has the shape (n_channels,).
+    """What is measured of one channel.
 
     Attributes
     ----------
-    clipped_share : ndarray
-        Share of the samples, 0 to 1, that rest at an extreme for three samples or longer.
-    clipped_longest_s : ndarray
-        Longest such rest.
-    flat_share : ndarray
-        Share of the samples, 0 to 1, within stretches of one second or longer that do not change at all.
-    flat_longest_s : ndarray
-        Longest such stretch.
-    peak_to_peak_uv : ndarray
-        Largest minus smallest sample.
-    rms_uv : ndarray
-        Root mean square about the mean.
+    clipped, flat : Stretches
+        Where it rests at an extreme for three samples or longer, and where it does not change for a second or longer.
+    clipped_share, flat_share : float
+        Share of the samples, 0 to 1, within them.
+    clipped_longest_s, flat_longest_s : float
+        The longest of them.
+    peak_to_peak_uv, rms_uv : float
+        Largest minus smallest sample; root mean square about the mean.
+    typical_peak_to_peak_uv, typical_rms_uv : float or None
+        As in `bandcairn.steps.amplitude.Amplitude`.
+    smallest_step_uv : float or None
+        Smallest difference of two neighbouring samples that differ; None where none do.
+    mains : Mains or None
+        Lines of the declared mains frequency; None where no run holds a segment of two seconds, or nothing moves.
+    identical : tuple of int
+        Indices of the other channels that hold the same samples; a channel that never changes has none.
     """
 
-    clipped_share: NDArray[np.float64]
-    clipped_longest_s: NDArray[np.float64]
-    flat_share: NDArray[np.float64]
-    flat_longest_s: NDArray[np.float64]
-    peak_to_peak_uv: NDArray[np.float64]
-    rms_uv: NDArray[np.float64]
+    clipped: Stretches
+    flat: Stretches
+    clipped_share: float
+    clipped_longest_s: float
+    flat_share: float
+    flat_longest_s: float
+    peak_to_peak_uv: float
+    rms_uv: float
+    typical_peak_to_peak_uv: float | None
+    typical_rms_uv: float | None
+    smallest_step_uv: float | None
+    mains: Mains | None
+    identical: tuple[int, ...]
 
 
 @dataclass(frozen=True, slots=True)
-class _Rests:
-    """Runs of two or more equal samples in a row: their value and their number of samples."""
+class Quality:
+    """What is measured of a signal.
 
-    value: NDArray[np.float64]
-    n_samples: NDArray[np.int64]
+    Attributes
+    ----------
+    channels : tuple of ChannelQuality
+        In the order of the signal.
+    gaps : Gaps
+        Alike for all channels.
+    spectrum : Spectrum or None
+        Mean density of segments of two seconds as recorded, shape (n_channels, n_freq), in uV^2/Hz; None where no run
+        is that long.
+    """
+
+    channels: tuple[ChannelQuality, ...]
+    gaps: Gaps
+    spectrum: Spectrum | None
 
 
 def assess(
-    samples: NDArray[np.float64], digital_limits: tuple[tuple[float, float] | None, ...], rate_hz: float
-) -> ChannelQuality:
-    """Measure how much of each channel is clipped or flat, and its amplitude.
-
-    A clean signal passes its extremes within a sample or two; a clipped one rests there. A rest counts when
-    it lasts three equal samples or longer at the channel's own extreme (an amplifier saturates before its
-    converter) or at the limits of the recorder. A channel that never changes is flat, not clipped.
+    signal: Signal,
+    mains_hz: MainsHz,
+    range_uv: tuple[float, float] | None = None,
+    *,
+    accept_other_mains: bool = False,
+) -> Quality:
+    """Measure clipped and flat stretches, gaps, amplitude, steps and mains of each channel.
 
     Parameters
     ----------
-    samples : ndarray, shape (n_channels, n_samples)
-        As recorded, unfiltered, in microvolt.
-    digital_limits : tuple of (float, float) or None
-        For each channel the lowest and the highest value that the recorder can give, in microvolt; None if
-        unknown.
-    rate_hz : float
-        Sampling rate.
+    signal : Signal
+        As recorded, unfiltered.
+    mains_hz : {50, 60}
+        The declared mains frequency.
+    range_uv : tuple of float or None
+        The lowest and the highest value that the recorder can give, in microvolt; None if unknown.
+    accept_other_mains : bool
+        Whether a line at the other mains frequency, and none at the declared one, is no reason to refuse.
 
     Returns
     -------
-    ChannelQuality
+    Quality
 
     Raises
     ------
     StepError
-        If there are no samples.
+        If there are no samples, or the mains frequency is not the declared one.
     """
-    if samples.shape[-1] == 0:
+    if signal.samples.shape[-1] == 0:
         raise StepError("found a recording without samples; its quality cannot be assessed")
-    low, high = np.min(samples, axis=-1), np.max(samples, axis=-1)
-    rests = [_rests(channel) for channel in samples]
-    clipped = [
-        _clipped_lengths(rest, float(lowest), float(highest), limits)
-        for rest, lowest, highest, limits in zip(rests, low, high, digital_limits, strict=True)
-    ]
-    flat = [rest.n_samples[rest.n_samples >= LEAST_FLAT_S * rate_hz] for rest in rests]
-    n_samples = samples.shape[-1]
+    rate_hz = float(signal.rate_hz)
+    starts = [run.first for run in signal.runs]
+    rests = [find_rests(channel, starts) for channel in signal.samples]
+    spectrum, n_averaged = _recorded_spectrum(signal)
+    moving = {
+        index: Spectrum(spectrum.frequencies_hz, spectrum.density[index])
+        for index, rest in enumerate(rests)
+        if spectrum is not None and rest.smallest_step_uv is not None
+    }
+    lines = {index: mains(one, mains_hz, n_averaged) for index, one in moving.items()}
+    if not accept_other_mains:
+        other_hz: MainsHz = 60 if mains_hz == 50 else 50
+        others = {index: mains(one, other_hz, n_averaged) for index, one in moving.items()}
+        _refuse_other_mains(signal.channels, mains_hz, lines, others)
+    identical = _identical(signal.samples, rests)
+    channels = tuple(
+        _channel_quality(
+            amplitude(signal.samples[index], signal.runs, rate_hz),
+            rests[index],
+            rate_hz,
+            range_uv=range_uv,
+            lines=lines.get(index),
+            identical=identical[index],
+            n_samples=signal.samples.shape[1],
+        )
+        for index in range(len(signal.channels))
+    )
+    return Quality(channels, _gaps(signal.runs, rate_hz), spectrum)
+
+
+def _channel_quality(
+    size: Amplitude,
+    rests: Rests,
+    rate_hz: float,
+    *,
+    range_uv: tuple[float, float] | None,
+    lines: Mains | None,
+    identical: tuple[int, ...],
+    n_samples: int,
+) -> ChannelQuality:
+    at_limit, still = clipped(rests, size.low_uv, size.high_uv, range_uv), flat(rests, rate_hz)
     return ChannelQuality(
-        clipped_share=_total(clipped) / n_samples,
-        clipped_longest_s=_longest(clipped) / rate_hz,
-        flat_share=_total(flat) / n_samples,
-        flat_longest_s=_longest(flat) / rate_hz,
-        peak_to_peak_uv=high - low,
-        rms_uv=np.std(samples, axis=-1),
+        clipped=at_limit,
+        flat=still,
+        clipped_share=int(at_limit.n_samples.sum()) / n_samples,
+        clipped_longest_s=int(at_limit.n_samples.max(initial=0)) / rate_hz,
+        flat_share=int(still.n_samples.sum()) / n_samples,
+        flat_longest_s=int(still.n_samples.max(initial=0)) / rate_hz,
+        peak_to_peak_uv=size.high_uv - size.low_uv,
+        rms_uv=size.rms_uv,
+        typical_peak_to_peak_uv=size.typical_peak_to_peak_uv,
+        typical_rms_uv=size.typical_rms_uv,
+        smallest_step_uv=rests.smallest_step_uv,
+        mains=lines,
+        identical=identical,
     )
 
 
-def _rests(samples: NDArray[np.float64]) -> _Rests:
-    """Find all runs of equal samples, shape (n_samples,)."""
-    same_as_next = np.zeros(samples.size + 1, dtype=np.int8)
-    np.equal(samples[1:], samples[:-1], out=same_as_next[1:-1].view(np.bool_))
-    edges = np.flatnonzero(np.diff(same_as_next))
-    first, last = edges[::2], edges[1::2]
-    return _Rests(samples[first], last - first + 1)
+def _recorded_spectrum(signal: Signal) -> tuple[Spectrum | None, int]:
+    """Return the mean density of segments that have no sample in common, and their number."""
+    rate_hz = float(signal.rate_hz)
+    length = round(SEGMENT_S * rate_hz)
+    starts = [
+        run.first + index * length
+        for run in signal.runs
+        for index in range(run.n_samples // length if length > 1 else 0)
+    ]
+    if not starts:
+        return None, 0
+    n_used = min(len(starts), MOST_SEGMENTS)
+    used = [starts[index * (len(starts) - 1) // max(1, n_used - 1)] for index in range(n_used)]
+    # Channel by channel: the segments of one fit into a core's cache.
+    spectra = [
+        power_density(
+            np.concatenate([channel[start : start + length] for start in used]),
+            rate_hz,
+            method="welch",
+            window="hann",
+            segment_s=SEGMENT_S,
+            overlap=0,
+        )
+        for channel in signal.samples
+    ]
+    return Spectrum(spectra[0].frequencies_hz, np.stack([one.density for one in spectra])), n_used
 
 
-def _clipped_lengths(
-    rests: _Rests, low: float, high: float, limits: tuple[float, float] | None
-) -> NDArray[np.int64]:
-    """Return the numbers of samples of those rests that are clipped; `low` and `high` are the extremes."""
-    if low == high:
-        return rests.n_samples[:0]
-    if limits is not None:
-        # Scaling to microvolt rounds: a value within a billionth of the range is the limit itself.
-        tolerance = 1e-9 * (limits[1] - limits[0])
-        low, high = max(low, limits[0] + tolerance), min(high, limits[1] - tolerance)
-    at_extreme = (rests.value <= low) | (rests.value >= high)
-    return rests.n_samples[at_extreme & (rests.n_samples >= LEAST_CLIPPED_SAMPLES)]
+def _refuse_other_mains(
+    channels: tuple[str, ...], mains_hz: MainsHz, declared: Mapping[int, Mains], other: Mapping[int, Mains]
+) -> None:
+    found = other_line(declared, other)
+    if found is None:
+        return
+    index, line = found
+    raise StepError(
+        f"found a line at {line.frequency_hz:.2f} Hz in {channels[index]}, {line.peak_db:.0f} dB above its "
+        f"neighbours, and none of {mains_hz} Hz or its harmonics in any channel; allowed: mains_hz as recorded, which "
+        f"study.yaml declares as {mains_hz}. Correct mains_hz, leave the recording out, or state in "
+        "quality.accept_other_mains why the line is accepted."
+    )
 
 
-def _total(lengths: list[NDArray[np.int64]]) -> NDArray[np.float64]:
-    """Sum each channel's lengths."""
-    return np.array([np.sum(of_channel) for of_channel in lengths], dtype=np.float64)
+def _gaps(runs: Sequence[Run], rate_hz: float) -> Gaps:
+    """Measure the gaps between runs: from where the next sample was due to where it stands."""
+    lengths_s = [
+        float(after.start_s - before.start_s) - before.n_samples / rate_hz for before, after in pairwise(runs)
+    ]
+    span_s = float(runs[-1].start_s - runs[0].start_s) + runs[-1].n_samples / rate_hz
+    return Gaps(len(lengths_s), max(lengths_s, default=0.0), sum(lengths_s) / span_s)
 
 
-def _longest(lengths: list[NDArray[np.int64]]) -> NDArray[np.float64]:
-    """Return each channel's largest length; 0 where there is none."""
-    return np.array([np.max(of_channel, initial=0) for of_channel in lengths], dtype=np.float64)
+def _identical(samples: NDArray[np.float64], rests: Sequence[Rests]) -> list[tuple[int, ...]]:
+    """Return for each channel which others hold the same samples."""
+    same: list[list[int]] = [[] for _ in samples]
+    moving = [index for index, rest in enumerate(rests) if rest.smallest_step_uv is not None]
+    for place, first in enumerate(moving):
+        for second in moving[place + 1 :]:
+            # A few samples tell most pairs apart.
+            if np.array_equal(samples[first, :64], samples[second, :64]) and np.array_equal(
+                samples[first], samples[second]
+            ):
+                same[first].append(second)
+                same[second].append(first)
+    return [tuple(others) for others in same]
