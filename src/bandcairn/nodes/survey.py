@@ -4,17 +4,18 @@ from __future__ import annotations
 
 import os
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from fractions import Fraction
 from typing import TYPE_CHECKING
 
 from bandcairn.errors import RecordingError, StudyError
-from bandcairn.recordings import RawIndex, survey
+from bandcairn.recordings import RawIndex, check_repair, parts_of, survey
+from bandcairn.study.aliases import labels_for
 from bandcairn.study.facts_check import check_facts
 from bandcairn.study.models import AnnotationSegments
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
-    from fractions import Fraction
     from pathlib import Path
 
     from bandcairn.signal import ChannelFacts, FileFacts
@@ -37,19 +38,31 @@ class RawContent:
         SHA-256 of the content of each channel by its label.
     annotated_segments : tuple of (str, float, float)
         Name, start and stop in seconds of the segments that its annotations declare.
+    labels : dict of str to str
+        Label in the file of each channel that the study calls otherwise.
     """
 
     facts: FileFacts
     digests: dict[str, str]
     annotated_segments: tuple[tuple[str, float, float], ...]
+    labels: dict[str, str] = field(default_factory=dict)
 
-    def facts_of(self, label: str) -> ChannelFacts:
-        """Return the facts of a channel that is known to be there."""
-        return next(channel for channel in self.facts.channels if channel.label == label)
+    def label_of(self, channel: str) -> str:
+        """Return the label under which the file holds a channel of the study."""
+        return self.labels.get(channel, channel)
 
-    def rate_hz(self, label: str, declared_hz: float | None) -> Fraction | float | None:
+    def digest_of(self, channel: str) -> str:
+        """Return the digest of a channel of the study."""
+        return self.digests[self.label_of(channel)]
+
+    def facts_of(self, channel: str) -> ChannelFacts:
+        """Return the facts of a channel of the study that is known to be there."""
+        label = self.label_of(channel)
+        return next(one for one in self.facts.channels if one.label == label)
+
+    def rate_hz(self, channel: str, declared_hz: float | None) -> Fraction | float | None:
         """Return a channel's own rate, else the declared one."""
-        own = self.facts_of(label).rate_hz
+        own = self.facts_of(channel).rate_hz
         return declared_hz if own is None else own
 
 
@@ -68,7 +81,7 @@ class Survey:
     contents: dict[str, RawContent]
     unreadable: dict[str, str]
     _paths: dict[str, Path]
-    _states: dict[str, tuple[int, int, int]]
+    _states: dict[str, tuple[int, ...]]
 
     @contextmanager
     def unchanged_file(self, recording: str) -> Iterator[Path]:
@@ -116,7 +129,8 @@ def survey_study(study: LoadedStudy, store: Path, progress: Progress | None = No
             unreadable[recording] = str(result)
         else:
             digests = {channel.label: channel.sha256 for channel in result.content.channels}
-            contents[recording] = RawContent(result.facts, digests, _annotated(study, result.facts))
+            labels = _aliased(study, result.facts)
+            contents[recording] = RawContent(result.facts, digests, _annotated(study, result.facts), labels)
     return Survey(contents, unreadable, paths, states)
 
 
@@ -142,15 +156,32 @@ def inspect_files(study: LoadedStudy, index: RawIndex) -> tuple[dict[str, FileFa
     """
     facts: dict[str, FileFacts] = {}
     unreadable: dict[str, str] = {}
+    # A signal with a smaller share of its own refuses the recording when it is loaded.
+    description = study.description
+    loads = [description.load_of(signal) for signal in description.signals.values()]
+    max_missing_share = max(Fraction(str(load.max_missing_share)) for load in loads)
     for row in study.recordings:
+        path = study.folder / row.file
         try:
-            facts[row.recording] = index.facts(study.folder / row.file, study.folder)
+            found = index.facts(path, study.folder)
+            check_repair(path, found.repair, max_missing_share)
+            facts[row.recording] = found
         except RecordingError as error:
             unreadable[row.recording] = str(error)
     problems = check_facts(study, facts)
     if problems:
         raise StudyError(problems)
     return facts, unreadable
+
+
+def _aliased(study: LoadedStudy, facts: FileFacts) -> dict[str, str]:
+    """Return the labels of the channels that the file calls otherwise than the study."""
+    aliases = study.description.aliases
+    if not aliases:
+        return {}
+    labels = [channel.label for channel in facts.channels]
+    found = {name: labels_for(name, labels, aliases) for name in aliases}
+    return {name: matches[0] for name, matches in found.items() if matches and matches[0] != name}
 
 
 def _annotated(study: LoadedStudy, facts: FileFacts) -> tuple[tuple[str, float, float], ...]:
@@ -164,9 +195,9 @@ def _annotated(study: LoadedStudy, facts: FileFacts) -> tuple[tuple[str, float, 
     )
 
 
-def _state(path: Path) -> tuple[int, int, int]:
+def _state(path: Path) -> tuple[int, ...]:
     try:
-        status = path.stat()
-    except OSError:
-        return (-1, 0, 0)
-    return status.st_size, status.st_mtime_ns, status.st_ino
+        stats = [part.stat() for part in parts_of(path)]
+    except (OSError, RecordingError):
+        return ()
+    return tuple(value for one in stats for value in (one.st_size, one.st_mtime_ns, one.st_ino))

@@ -15,8 +15,8 @@ from typing import Any
 
 from bandcairn.errors import RecordingError
 from bandcairn.recordings.content import CONTENT_FORMAT, ChannelContent, FileContent, content_digests
-from bandcairn.recordings.reading import inspect, state_of
-from bandcairn.recordings.refusal import refusal
+from bandcairn.recordings.reading import inspect, parts_of
+from bandcairn.recordings.refusal import refusal, unreadable
 from bandcairn.signal import Annotation, ChannelFacts, FileDetails, FileFacts, Gap, Repair
 
 # Raised whenever what is remembered, or the reading it comes from, changes.
@@ -163,9 +163,13 @@ class RawIndex:
 
 
 def _state(path: Path) -> _State:
-    mark = state_of(path)
-    latest = max(value for index, value in enumerate(mark) if index % 3)
-    return _State(list(mark), time.time_ns() - latest >= _RACY_NS)
+    try:
+        stats = [part.stat() for part in parts_of(path)]
+    except OSError as error:
+        raise unreadable(path, error) from error
+    latest_ns = max(max(one.st_mtime_ns, one.st_ctime_ns) for one in stats)
+    mark = [value for one in stats for value in (one.st_size, one.st_mtime_ns, one.st_ctime_ns)]
+    return _State(mark, time.time_ns() - latest_ns >= _RACY_NS)
 
 
 def _name(path: Path, root: Path) -> str:

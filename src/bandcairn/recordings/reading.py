@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Literal
 
 from bandcairn.recordings import converted, delimited, edf, parquet
 from bandcairn.recordings.brainvision import companions_of
-from bandcairn.recordings.refusal import refusal, unreadable
+from bandcairn.recordings.refusal import refusal
 from bandcairn.recordings.table import inspect_table, read_table
 
 if TYPE_CHECKING:
@@ -40,20 +40,9 @@ def open_table(path: Path) -> Table:
     return parquet.open_parquet(path) if path.suffix.lower() == ".parquet" else delimited.open_delimited(path)
 
 
-def state_of(path: Path) -> tuple[int, ...]:
-    """Return size and times (of modification and of change of status, in ns) of all files of a recording.
-
-    Raises
-    ------
-    RecordingError
-        If it is not there.
-    """
-    try:
-        parts = (path, *companions_of(path)) if path.suffix.lower() == ".vhdr" else (path,)
-        stats = [part.stat() for part in parts]
-    except OSError as error:
-        raise unreadable(path, error) from error
-    return tuple(value for one in stats for value in (one.st_size, one.st_mtime_ns, one.st_ctime_ns))
+def parts_of(path: Path) -> tuple[Path, ...]:
+    """Return all files of a recording, the named one first: a BrainVision header has its samples beside it."""
+    return (path, *companions_of(path)) if path.suffix.lower() == ".vhdr" else (path,)
 
 
 def inspect(path: Path) -> FileFacts:

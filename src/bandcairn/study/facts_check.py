@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from bandcairn.errors import Problem, UnknownUnitError
+from bandcairn.study.aliases import labels_for
 from bandcairn.study.faults import STUDY_FILE, Fault, listed, suggestion
 from bandcairn.study.filter_checks import reach_s
 from bandcairn.study.models import AnnotationSegments
@@ -21,6 +22,8 @@ if TYPE_CHECKING:
     from bandcairn.study.models import AnySignal, Load
     from bandcairn.study.tables import RecordingRow, SegmentRow
 
+_OWN_UNITS = ("EDF", "BDF")  # formats with a unit for each channel, which may be blank
+_TABLES = ("delimited", "Parquet")
 _SAME = 1e-9  # relative: a declared decimal rate and the exact fraction of a file differ by rounding alone
 _SLACK_S = 1e-6  # a stretch may end this much beyond the last sample: tables are written with rounded times
 
@@ -42,7 +45,13 @@ class _Case:
         first: dict[str, ChannelFacts] = {}
         for channel in self.facts.channels:
             first.setdefault(channel.label, channel)
-        return tuple(first[label] for label in self.signal.channels if label in first)
+        found = (self.labels_for(name) for name in self.signal.channels)
+        return tuple(first[labels[0]] for labels in found if labels)
+
+    def labels_for(self, name: str) -> tuple[str, ...]:
+        """Return the labels of the file that mean a channel."""
+        labels = tuple(channel.label for channel in self.facts.channels)
+        return labels_for(name, labels, self.study.description.aliases or {})
 
     def rate_hz(self, channel: ChannelFacts) -> float | None:
         """Return the rate of a channel: the file's own, else the declared one."""
@@ -100,6 +109,7 @@ def _check_case(case: _Case) -> Iterator[Problem]:
     yield from _check_channels(case)
     yield from _check_rates(case)
     yield from _check_units(case)
+    yield from _check_missing(case)
     yield from _check_epoch(case)
     yield from _check_fir_length(case)
 
@@ -107,15 +117,26 @@ def _check_case(case: _Case) -> Iterator[Problem]:
 def _check_channels(case: _Case) -> Iterator[Problem]:
     labels = [channel.label for channel in case.facts.channels]
     for index, wanted in enumerate(case.signal.channels):
-        count = labels.count(wanted)
-        if count == 0:
-            remedy = suggestion(wanted, labels, "Correct the name, or leave the recording out.")
+        found = case.labels_for(wanted)
+        if not found and wanted in case.facts.details.left_out:
+            told = {
+                "found": f"{wanted}, which holds annotations or triggers",
+                "allowed": "a channel of voltages",
+            }
+            yield case.refuse("channels", index, **told, remedy="Correct the name.")
+        elif not found:
+            remedy = suggestion(
+                wanted, labels, "Correct the name, explain it in aliases, or leave the recording out."
+            )
             allowed = f"a channel of the file: {listed(labels)}"
             yield case.refuse("channels", index, found=f"no channel {wanted}", allowed=allowed, remedy=remedy)
-        elif count > 1:
-            found = f"{count} channels named {wanted}"
+        elif len(found) > 1 and len(set(found)) == 1:
+            told = {"found": f"{len(found)} channels named {found[0]}", "allowed": "each channel once"}
             remedy = "Rename one in a copy of the file: which is meant cannot be told."
-            yield case.refuse("channels", index, found=found, allowed="each channel once", remedy=remedy)
+            yield case.refuse("channels", index, **told, remedy=remedy)
+        elif len(found) > 1:
+            told = {"found": f"{listed(found)} for {wanted}", "allowed": "one of its aliases in a file"}
+            yield case.refuse("channels", index, **told, remedy="Delete the alias that is not meant.")
 
 
 def _check_rates(case: _Case) -> Iterator[Problem]:
@@ -163,19 +184,49 @@ def _check_rate(case: _Case, rate_hz: float) -> Iterator[Problem]:
 
 
 def _check_units(case: _Case) -> Iterator[Problem]:
-    declared = case.load.unit
     for channel in case.channels():
-        unit = declared if channel.unit is None else channel.unit
+        unit = declared_unit(channel, case.facts, case.load) or channel.unit
         if _microvolts(unit) is None:
             found = f"{unit!r} for {channel.label}" if unit else f"no unit for {channel.label}"
-            remedy = (
-                "Declare load: {unit: ...}."
-                if channel.unit is None
-                else "Correct a copy of the file's header."
-            )
-            yield case.refuse(
-                "load", "unit", found=found, allowed=f"one of {listed(KNOWN_UNITS)}", remedy=remedy
-            )
+            allowed = f"one of {listed(KNOWN_UNITS)}"
+            remedy = _unit_remedy(case, channel)
+            yield case.refuse("load", "unit", found=found, allowed=allowed, remedy=remedy)
+
+
+def _unit_remedy(case: _Case, channel: ChannelFacts) -> str:
+    if case.facts.details.format in _OWN_UNITS:
+        return "If its unit is known, declare load: {unit: ..., unit_reason: ...}: a wrong scale is worse than no data."
+    return "Declare load: {unit: ...}." if channel.unit is None else "Correct a copy of the file's header."
+
+
+def declared_unit(channel: ChannelFacts, facts: FileFacts, load: Load) -> str | None:
+    """Return the declared unit where it counts; None where the file's own word does.
+
+    A table states none. EDF and BDF state one for each channel; where it is blank or unknown, a declaration counts
+    only together with its reason.
+
+    Parameters
+    ----------
+    channel : ChannelFacts
+        The channel.
+    facts : FileFacts
+        Its file.
+    load : Load
+        What the study declares.
+    """
+    if facts.details.format in _OWN_UNITS:
+        known = _microvolts(channel.unit) is not None
+        return None if known or load.unit_reason is None else load.unit
+    return load.unit if channel.unit is None else None
+
+
+def _check_missing(case: _Case) -> Iterator[Problem]:
+    """Refuse a clock with gaps in a table, unless they are declared."""
+    gaps = case.facts.gaps
+    if case.facts.details.format in _TABLES and gaps and case.load.missing != "gap":
+        found = f"{len(gaps)} gaps in time_s, the first from {float(gaps[0].start_s):g} to {float(gaps[0].stop_s):g} s"
+        remedy = "Declare load: {missing: gap}, or cut the recording."
+        yield case.refuse("load", "missing", found=found, allowed="a regular clock", remedy=remedy)
 
 
 def _microvolts(unit: str | None) -> float | None:
@@ -213,7 +264,9 @@ def _check_stretch(
 
 
 def _duration_s(study: LoadedStudy, facts: FileFacts) -> float | None:
-    """Return the length of a file by its longest channel; None where no channel has a rate."""
+    """Return the length of a file, gaps included; by its longest channel where the rate is declared; else None."""
+    if facts.duration_s is not None:
+        return float(facts.duration_s)
     durations = []
     for channel in facts.channels:
         declared = study.description.load.rate_hz
@@ -245,18 +298,30 @@ def _check_fir_length(case: _Case) -> Iterator[Problem]:
 
 
 def _used_s(case: _Case) -> float | None:
-    """Return the length of what is used of a recording; None where the rate is unknown."""
+    """Return the longest gap-free stretch of what is used of a recording; None where the rate is unknown."""
+    used = _used(case)
+    return None if used is None else _longest_s(case, *used)
+
+
+def _used(case: _Case) -> tuple[float, float] | None:
+    """Return start and stop of what is used of a recording; None where the rate is unknown."""
     durations = [c.n_samples / rate for c in case.channels() if (rate := case.rate_hz(c))]
     if not durations:
         return None
+    if case.facts.gaps and case.facts.duration_s is not None:
+        durations = [float(case.facts.duration_s)]
     stop_s = min(*durations, math.inf if case.row.stop_s is None else case.row.stop_s)
-    return stop_s - (case.row.start_s or 0.0)
+    return case.row.start_s or 0.0, stop_s
+
+
+def _longest_s(case: _Case, start_s: float, stop_s: float) -> float:
+    return max((stop - start for start, stop in case.facts.stretches(start_s, stop_s)), default=0.0)
 
 
 def _stretches_s(case: _Case) -> list[float]:
-    """Return the lengths of the stretches that a signal uses; empty where the rate is unknown."""
-    whole_s = _used_s(case)
-    if whole_s is None:
+    """Return the longest gap-free part of each stretch that a signal uses; empty where the rate is unknown."""
+    whole = _used(case)
+    if whole is None:
         return []
     segments = _segments(case)
     used = {
@@ -265,8 +330,8 @@ def _stretches_s(case: _Case) -> list[float]:
         if case.signal.segments is None or segment in case.signal.segments
     }
     if segments and case.signal.segments != ():
-        return [stop_s - start_s for start_s, stop_s in used.values()]
-    return [whole_s]
+        return [_longest_s(case, start_s, stop_s) for start_s, stop_s in used.values()]
+    return [_longest_s(case, *whole)]
 
 
 def _segments(case: _Case) -> list[tuple[str, float, float]]:

@@ -18,6 +18,7 @@ from bandcairn.study.blocks import (
     Number,
     Overlap,
     Positive,
+    Share,
     refusal,
     told,
 )
@@ -47,18 +48,43 @@ _BAND = "two increasing values, the lower one 0 or above"
 
 
 class Load(Block):
-    """What a delimited file does not say of itself."""
+    """What a file does not say of itself, and how much of it may be missing."""
 
     rate_hz: Positive | None = Field(
         default=None,
-        description="Sampling rate of delimited files that have no time_s column.",
+        description="Sampling rate of delimited and Parquet files that have no time_s column.",
         json_schema_extra=told("Hz", "above 0"),
     )
     unit: Annotated[str, AfterValidator(_known_unit)] | None = Field(
         default=None,
-        description="Unit of the numbers in delimited files.",
+        description="Unit of the numbers in delimited and Parquet files; with a reason also of EDF and BDF "
+        "channels whose unit is blank or unknown.",
         json_schema_extra=told("", f"one of {', '.join(KNOWN_UNITS)}"),
     )
+    unit_reason: Name | None = Field(
+        default=None,
+        description="Why the unit is known although an EDF or BDF file does not tell it; recorded with every load.",
+        json_schema_extra=told("", "text; only with unit"),
+    )
+    missing: Literal["refuse", "gap"] = Field(
+        default="refuse",
+        description="What blank cells and jumps of the clock of delimited and Parquet files are: a fault, or a gap.",
+        json_schema_extra=told("", "refuse or gap"),
+    )
+    max_missing_share: Share = Field(
+        default=0.01,
+        description="Largest share of its data records by which an EDF or BDF file may differ from its header's "
+        "number; the whole records are used, and what was found is recorded.",
+        json_schema_extra=told("share", "0 to 1"),
+    )
+
+    @model_validator(mode="after")
+    def _a_reason_is_for_a_unit(self) -> Load:
+        if self.unit_reason is not None and self.unit is None:
+            raise refusal(
+                "unit", "nothing", f"one of {', '.join(KNOWN_UNITS)}", "A unit_reason needs a unit."
+            )
+        return self
 
 
 class Resample(Block):
@@ -240,7 +266,7 @@ class _Signal(Block):
     """What signals of every kind have in common."""
 
     channels: Annotated[Names, Field(min_length=1)] = Field(
-        description="Names of the channels as they stand in the files.",
+        description="Names of the channels as they stand in the files, or names that aliases explains.",
         json_schema_extra=told("", "at least one name, each once"),
     )
     segments: Names | None = Field(
@@ -251,7 +277,7 @@ class _Signal(Block):
     )
     load: Load | None = Field(
         default=None,
-        description="Rate and unit of delimited files for this signal; absent: the study's load.",
+        description="What files do not say of themselves, for this signal; absent: the study's load.",
         json_schema_extra=told("", "a load block"),
     )
     recorder: Recorder | None = Field(
@@ -463,9 +489,15 @@ class StudyDescription(Block):
     mains_hz: Literal[50, 60] = Field(
         description="Mains frequency where the study was recorded.", json_schema_extra=told("Hz", "50 or 60")
     )
+    aliases: dict[Name, Annotated[Names, Field(min_length=1)]] | None = Field(
+        default=None,
+        description="Channel names of the study and the labels under which they stand in files; the name itself "
+        "wins where a file has it.",
+        json_schema_extra=told("", "names, each with a list of labels; no label under two names"),
+    )
     load: Load = Field(
         default=Load(),
-        description="Rate and unit of delimited files, for every signal without a load block of its own.",
+        description="What files do not say of themselves, for every signal without a load block of its own.",
         json_schema_extra=told("", "a load block"),
     )
     signals: Annotated[dict[Name, Annotated[AnySignal, Field(discriminator="kind")]], Field(min_length=1)] = (
@@ -480,6 +512,24 @@ class StudyDescription(Block):
         json_schema_extra=told("", "a list of questions, each name once"),
     )
 
+    @model_validator(mode="after")
+    def _aliases_are_clear(self) -> StudyDescription:
+        aliases = self.aliases or {}
+        meant = [(label, name) for name, labels in aliases.items() for label in labels]
+        first = dict(reversed(meant))
+        twice = sorted(
+            {label for label, name in meant if first[label] != name or label in {*aliases} - {name}}
+        )
+        if twice:
+            found = f"{', '.join(twice)} with two meanings"
+            raise refusal("aliases", found, "each label under one name", "Delete one of the two.")
+        channels = {channel for signal in self.signals.values() for channel in signal.channels}
+        unused = sorted(set(aliases) - channels)
+        if unused:
+            allowed = f"channels of the signals: {', '.join(sorted(channels))}"
+            raise refusal("aliases", ", ".join(unused), allowed, "Correct the name, or delete it.")
+        return self
+
     def load_of(self, signal: AnySignal) -> Load:
-        """Return what is declared of delimited files: the signal's own load block, else the study's."""
+        """Return what is declared of files: the signal's own load block, else the study's."""
         return signal.load or self.load
