@@ -255,6 +255,7 @@ def statistics() -> Iterator[Frame]:
             "band": ("alpha",) * n,
             "value": share,
             "unit": ("1",) * n,
+            "epochs_used": np.full(n, 20),
             "design/shift": ("day", "night") * (n // 2),
             "design/group": tuple("crew" if int(person[1:]) < 4 else "office" for person in people),
         }

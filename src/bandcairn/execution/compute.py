@@ -5,11 +5,12 @@ from __future__ import annotations
 import json
 from typing import TYPE_CHECKING, Any
 
+from bandcairn.execution.epoch_nodes import epoch_node
 from bandcairn.execution.filter_nodes import filter_node, reference_node
 from bandcairn.execution.group_nodes import statistics_node, table_node
 from bandcairn.execution.quality_nodes import quality_node, verdict_node
 from bandcairn.execution.signal_nodes import load_node, resample_node
-from bandcairn.execution.spectrum_nodes import beats_node, epoch_node, features_node, spectrum_node
+from bandcairn.execution.spectrum_nodes import beats_node, features_node, spectrum_node
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Mapping

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
+from bandcairn.execution.epoch_nodes import EPOCH_COUNTS
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
@@ -27,8 +28,7 @@ TABLE_COLUMNS = {
     "unit": "text",
     "epochs_used": "count",
     "epochs_total": "count",
-    "too_large": "count",
-    "too_flat": "count",
+    **dict.fromkeys(EPOCH_COUNTS, "count"),
     "note": "text",
     "node": "text",
 }
@@ -36,6 +36,8 @@ TABLE_COLUMNS = {
 OF_BANDS = ("quantisation_margin_db", "beyond_recorder_share", "recorder_loss_db")
 # Features that a rounded time of a beat leaves alone.
 _BLIND_TO_TIMING = ("heart_rate", "mean_nn", "beats", "beats_corrected")
+# Beyond this ratio of epochs two levels are called uneven: common practice, without a source.
+_UNEVEN = 2
 # Before the name of a design column, lest it meet a column of the table.
 DESIGN = "design/"
 STATISTICS_COLUMNS = {
@@ -158,9 +160,11 @@ def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> 
     channels = question["channel_names"]
     groups = [channels] if question["channels"] == "mean" else [[channel] for channel in channels]
     for group in groups:
-        result = _compared(question, [row for row in rows if row["channel"] in group], len(group))
+        of_group = [row for row in rows if row["channel"] in group]
+        result = _compared(question, of_group, len(group))
         yield {
             **asdict(result),
+            "note": "; ".join(filter(None, (result.note, uneven_epochs(question, of_group)))) or None,
             "question": question["name"],
             "signal": question["signal"],
             "channel": "mean" if question["channels"] == "mean" else group[0],
@@ -192,6 +196,46 @@ def _compared(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]], n_
         [level for _, _, level in observations],
         comparison,
     )
+
+
+def uneven_epochs(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> str | None:
+    """Tell if one level of a question rests on more than twice the epochs of the other.
+
+    The logarithm of a mean over few epochs lies lower than that over many, and a maximum too.
+
+    Parameters
+    ----------
+    question : mapping
+        The question: its factor and contrast.
+    rows : sequence of mapping
+        Rows of features; those without a value say nothing.
+
+    Returns
+    -------
+    str or None
+        Within people, in how many of them; between people, by the means of the groups.
+    """
+    factor: str = question.get("within") or question["between"]
+    first, second = question["contrast"]
+    kept: dict[tuple[str, str], list[int]] = {}
+    for row in rows:
+        level = row["segment"] if factor == "segment" else row[f"{DESIGN}{factor}"]
+        if row["value"] is not None and level in (first, second):
+            who = row["participant"] if "within" in question else ""
+            kept.setdefault((who, level), []).append(row["epochs_used"])
+    means = {place: sum(counts) / len(counts) for place, counts in kept.items()}
+    people = [who for who, level in means if level == first and (who, second) in means]
+    uneven = [who for who in people if not _alike(means[who, first], means[who, second])]
+    if not uneven:
+        return None
+    told = f"epochs kept in {first} and in {second} differ by more than a factor of {_UNEVEN:g}"
+    if "within" in question:
+        return f"{told} in {len(uneven)} of {len(people)} participants"
+    return f"{told}: {means['', first]:.1f} and {means['', second]:.1f} on average"
+
+
+def _alike(count: float, other: float) -> bool:
+    return max(count, other) <= _UNEVEN * min(count, other)
 
 
 def _observations(

@@ -1,15 +1,16 @@
-"""Nodes from samples to features: beats, epoch, spectrum, features."""
+"""Nodes from samples to features: beats, spectrum, features."""
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from bandcairn.execution.epoch_nodes import epoch_counts, why_missing
 from bandcairn.execution.frames import (
-    epochs_to_frame,
     frame_to_epochs,
     frame_to_signal,
     frame_to_spectra,
@@ -18,15 +19,16 @@ from bandcairn.execution.frames import (
 from bandcairn.steps.beats import find_r_peaks
 from bandcairn.steps.eeg import eeg_features
 from bandcairn.steps.emg import EmgEpochs, emg_features, rms
-from bandcairn.steps.epoch import TOO_FLAT, TOO_LARGE, Reject, Segment, cut_epochs, epoch_view
+from bandcairn.steps.epoch import epoch_view
 from bandcairn.steps.features import stack_channels
 from bandcairn.steps.heart import NO_TACHOGRAM, heart_band_features, heart_features, tachogram
+from bandcairn.steps.rejection import KEPT
 from bandcairn.steps.spectrum import power_density
 from bandcairn.steps.stop_bands import note_stop_bands
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator, Mapping
+    from collections.abc import Mapping
 
     from numpy.typing import NDArray
 
@@ -51,18 +53,6 @@ def beats_node(_: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
     }
     inverted = sorted({channel for channel, _, beats in found if beats.inverted})
     return Frame(columns, {"channels": list(signal.channels), "inverted": inverted})
-
-
-def epoch_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
-    """Lay the windows of every segment and mark those to reject."""
-    signal = frame_to_signal(parents["signal"])
-    segments = tuple(Segment(*segment) for segment in parameters["segments"])
-    reject = Reject(**parameters["reject"]) if "reject" in parameters else None
-    epochs = cut_epochs(signal, parameters["length_s"], parameters["overlap"], segments, reject)
-    starts: dict[str, float] = {}
-    for segment in segments or (Segment("", float(signal.runs[0].start_s), 0),):
-        starts.setdefault(segment.name, segment.start_s)
-    return epochs_to_frame(epochs, signal, tuple(starts.items()))
 
 
 def spectrum_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> Frame:
@@ -150,7 +140,14 @@ def features_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -
     for index, (name, start_s) in enumerate(parents["epochs"].facts["segments"]):
         here = np.array([segment == name for segment in epochs.segment], dtype=bool)
         values = measure(_Segment(index, start_s, here), parameters, parents)
-        rows += _feature_rows(values, parents["epochs"].facts["channels"], name, epochs.reason[:, here])
+        for row, channel in enumerate(parents["epochs"].facts["channels"]):
+            reason = epochs.reason[row, here]
+            counts = epoch_counts(reason, epochs.no_window.get(name, 0))
+            missing = why_missing(
+                channel, int(np.count_nonzero(reason == KEPT)), parameters, parents["epochs"]
+            )
+            told = {"channel": channel, "segment": name or None, **counts}
+            rows += [{**told, **_feature(value, row, reason, missing)} for value in values]
     return Frame({name: _column([row[name] for row in rows]) for name in rows[0]})
 
 
@@ -238,25 +235,17 @@ def _length_s(epochs: Frame) -> float:
     return float(epochs.facts["length"] / Fraction(epochs.facts["rate_hz"]))
 
 
-def _feature_rows(
-    values: tuple[FeatureValue, ...], channels: list[str], segment: str, reason: NDArray[np.int8]
-) -> Iterator[dict[str, Any]]:
-    """Yield one row a channel and feature; the counts of epochs stand beside each value."""
-    for value in values:
-        for row, channel in enumerate(channels):
-            yield {
-                "channel": channel,
-                "segment": segment or None,
-                "feature": value.feature,
-                "band": value.band or None,
-                "value": float(value.values[row]),
-                "unit": value.unit,
-                "epochs_used": int(np.count_nonzero(reason[row] == 0)),
-                "epochs_total": reason.shape[1],
-                "too_large": int(np.count_nonzero(reason[row] == TOO_LARGE)),
-                "too_flat": int(np.count_nonzero(reason[row] == TOO_FLAT)),
-                "note": value.note[row] or None,
-            }
+def _feature(value: FeatureValue, row: int, reason: NDArray[np.int8], missing: str | None) -> dict[str, Any]:
+    """Return one feature of one channel; the counts of epochs stand beside it."""
+    return {
+        "feature": value.feature,
+        "band": value.band or None,
+        "value": math.nan if missing else float(value.values[row]),
+        "unit": value.unit,
+        "epochs_used": int(np.count_nonzero(reason == KEPT)),
+        "epochs_total": len(reason),
+        "note": missing or value.note[row] or None,
+    }
 
 
 def _column(values: list[Any]) -> NDArray[Any] | tuple[str | None, ...]:

@@ -39,12 +39,12 @@ STEPS = (
     Step("reference", 1, "measures the channels against others"),
     Step("filter", 2, "applies the filter stages in order"),
     Step("beats", 1, "finds the R peaks of an ECG"),
-    Step("epoch", 1, "lays windows and marks those to reject"),
+    Step("epoch", 2, "lays windows and marks those that are not used"),
     Step("spectrum", 1, "estimates power spectral densities"),
-    Step("features", 1, "computes the features of one signal of one recording"),
+    Step("features", 2, "computes the features of one signal of one recording"),
     Step("verdict", 2, "holds each channel's quality against the study's limits"),
-    Step("table", 1, "gathers a signal's features from all recordings"),
-    Step("statistics", 1, "answers the questions of one family"),
+    Step("table", 2, "gathers a signal's features from all recordings"),
+    Step("statistics", 2, "answers the questions of one family"),
 )
 VERSIONS = {step.name: step.version for step in STEPS}
 RECORDING_STEPS = tuple(step.name for step in STEPS[:9])
