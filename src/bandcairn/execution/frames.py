@@ -59,7 +59,12 @@ def _signal_facts(rate_hz: Fraction, channels: tuple[str, ...], runs: tuple[Run,
     }
 
 
-def epochs_to_frame(epochs: Epochs, signal: Signal, segments: tuple[tuple[str, float], ...]) -> Frame:
+def epochs_to_frame(
+    epochs: Epochs,
+    signal: Signal,
+    segments: tuple[tuple[str, float], ...],
+    **facts: Any,  # noqa: ANN401 - JSON values
+) -> Frame:
     """Return the node of epochs: one row a window; for each channel its peak-to-peak and why it is rejected.
 
     Parameters
@@ -70,6 +75,8 @@ def epochs_to_frame(epochs: Epochs, signal: Signal, segments: tuple[tuple[str, f
         The signal they lie in.
     segments : tuple of (str, float)
         Name and start in seconds of every segment, also of those too short for a window.
+    **facts
+        What else is known of them.
     """
     columns: dict[str, NDArray[Any] | tuple[str | None, ...]] = {
         "first": epochs.first,
@@ -81,11 +88,15 @@ def epochs_to_frame(epochs: Epochs, signal: Signal, segments: tuple[tuple[str, f
     ):
         columns[f"peak_to_peak_uv/{channel}"] = peak_to_peak
         columns[f"reason/{channel}"] = reason
-    facts = {
+    if epochs.step_uv is not None:
+        columns |= {f"step_uv/{name}": row for name, row in zip(signal.channels, epochs.step_uv, strict=True)}
+    facts |= {
         "length": epochs.length,
         "rate_hz": str(signal.rate_hz),
         "channels": list(signal.channels),
         "segments": [list(segment) for segment in segments],
+        "no_window": epochs.no_window,
+        "largest_shift_s": epochs.largest_shift_s,
     }
     return Frame(columns, facts)
 
@@ -100,6 +111,8 @@ def frame_to_epochs(frame: Frame) -> Epochs:
         length=frame.facts["length"],
         peak_to_peak_uv=np.stack([frame.numbers(f"peak_to_peak_uv/{channel}") for channel in channels]),
         reason=np.stack([frame.numbers(f"reason/{channel}") for channel in channels]),
+        no_window=frame.facts["no_window"],
+        largest_shift_s=frame.facts["largest_shift_s"],
     )
 
 
