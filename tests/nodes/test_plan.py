@@ -28,6 +28,7 @@ if TYPE_CHECKING:
     Load = Callable[..., LoadedStudy]
 
 BELOW_FILTER = {"filter", "epoch", "spectrum", "features", "table"}
+JUDGED = {"quality", "verdict", "table"}
 
 
 @pytest.fixture
@@ -82,9 +83,10 @@ FATIGUE = of("fatigue by shift", "statistics")
 @pytest.mark.parametrize(
     ("before", "after", "expected"),
     [
-        ("cutoff_hz: 400", "cutoff_hz: 350", of("arm", *BELOW_FILTER) | FATIGUE),
-        ("alpha: [8, 13]", "alpha: [8, 12]", of("eeg", "features", "table") | WATCH),
-        ("rate_hz: 128", "rate_hz: 64", of("eeg", "resample", *BELOW_FILTER) | WATCH),
+        # What filters and bands ask of a recording is held against its quality, which is not measured anew.
+        ("cutoff_hz: 400", "cutoff_hz: 350", of("arm", *BELOW_FILTER, "verdict") | FATIGUE),
+        ("alpha: [8, 13]", "alpha: [8, 12]", of("eeg", "features", "verdict", "table") | WATCH),
+        ("rate_hz: 128", "rate_hz: 64", of("eeg", "resample", *BELOW_FILTER, "verdict") | WATCH),
         (
             "peak_to_peak_uv: 150",
             "peak_to_peak_uv: 100",
@@ -109,7 +111,22 @@ FATIGUE = of("fatigue by shift", "statistics")
         ("scale: log10", "scale: ln", WATCH),
         ("name: fatigue by shift", "name: fatigue at night", FATIGUE | of("fatigue at night", "statistics")),
         ("study: Harbour", "study: Lighthouse", set()),
-        ("mains_hz: 50", "mains_hz: 60", set()),
+        (
+            "mains_hz: 50",
+            "mains_hz: 60",
+            of("eeg", *JUDGED) | of("heart", *JUDGED) | of("arm", *JUDGED) | WATCH | FATIGUE,
+        ),
+        ("mains_hz: 50\n", "mains_hz: 50\nload: {unit: mV}\n", set()),
+        (
+            "    segments: [hold]\n",
+            "    segments: [hold]\n    recorder: {lowpass_hz: 300}\n",
+            of("arm", *JUDGED) | FATIGUE,
+        ),
+        (
+            "    segments: [hold]\n",
+            "    segments: [hold]\n    quality: {on_band_failure: exclude}\n",
+            of("arm", "table") | FATIGUE,
+        ),
     ],
 )
 def test_an_edit_touches_its_own_step_and_what_is_below_it(
@@ -140,7 +157,7 @@ def test_a_filter_taken_away_leaves_no_node(plan: Plan, edited: Callable[[str, s
     after = edited(
         "    filter:\n      - {type: bandpass, cutoff_hz: [1, 40], design: butterworth, order: 2}\n", ""
     )
-    assert touched(plan, after) == of("heart", "beats", *BELOW_FILTER) | WATCH
+    assert touched(plan, after) == of("heart", "beats", *BELOW_FILTER, "verdict") | WATCH
     assert ("p1_day", "heart", "filter") not in after.slots
     beats = after.nodes[after.slots["p1_day", "heart", "beats"]]
     assert beats.parents == (("signal", after.slots["p1_day", "heart", "load"]),)
