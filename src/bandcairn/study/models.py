@@ -22,6 +22,7 @@ from bandcairn.study.blocks import (
     refusal,
     told,
 )
+from bandcairn.study.epoch_blocks import Epoch  # noqa: TC001 - pydantic reads it to build the model
 from bandcairn.study.filter_blocks import FilterStage  # noqa: TC001 - pydantic reads it to build the model
 from bandcairn.study.quality_blocks import EcgQuality, EegQuality, EmgQuality, QualityLimits, Recorder
 from bandcairn.study.reference_blocks import Reference, referenced_channels
@@ -93,56 +94,6 @@ class Resample(Block):
     rate_hz: Positive = Field(
         description="New sampling rate; never above that of the file.",
         json_schema_extra=told("Hz", "above 0, at most the rate of the file"),
-    )
-
-
-class Reject(Block):
-    """When an epoch is dropped."""
-
-    peak_to_peak_uv: Positive | None = Field(
-        default=None,
-        description="An epoch whose highest and lowest sample differ by more is dropped.",
-        json_schema_extra=told("uV", "above 0"),
-    )
-    flat_uv: Positive | None = Field(
-        default=None,
-        description="An epoch whose highest and lowest sample differ by less is dropped.",
-        json_schema_extra=told("uV", "above 0"),
-    )
-    scope: Literal["channel", "epoch"] = Field(
-        default="channel",
-        description="Dropped for the channel that fails, or for all channels of the signal.",
-        json_schema_extra=told("", "channel or epoch"),
-    )
-
-    @model_validator(mode="after")
-    def _one_limit_at_least(self) -> Reject:
-        low, high = self.flat_uv, self.peak_to_peak_uv
-        if low is None and high is None:
-            allowed = "peak_to_peak_uv, flat_uv or both"
-            raise refusal("", "no limit", allowed, "Declare a limit, or delete reject.")
-        if low is not None and high is not None and low >= high:
-            allowed = f"below peak_to_peak_uv ({high:g})"
-            raise refusal("flat_uv", f"{low:g}", allowed, "As it stands every epoch would be dropped.")
-        return self
-
-
-class Epoch(Block):
-    """How a stretch is cut into epochs."""
-
-    length_s: Positive = Field(
-        description="Length of an epoch.",
-        json_schema_extra=told("s", "above 0, at most the shortest stretch"),
-    )
-    overlap: Overlap = Field(
-        default=0.0,
-        description="Share of an epoch that it has in common with the next.",
-        json_schema_extra=told("share", "0 or above, below 1"),
-    )
-    reject: Reject | None = Field(
-        default=None,
-        description="When an epoch is dropped; absent: never.",
-        json_schema_extra=told("", "a block of limits"),
     )
 
 
@@ -485,6 +436,18 @@ class StudyDescription(Block):
         description="Table of segments, or the annotations that become segments; "
         "absent: segments.csv where the study folder has one.",
         json_schema_extra=told("", "path of a .csv or .tsv file, or {annotations: [texts]}"),
+    )
+    events: Name | None = Field(
+        default=None,
+        description="Table of events that epochs may lie about; absent: events.csv where the study folder has one, "
+        "else the annotations of the files.",
+        json_schema_extra=told("", "path of a .csv or .tsv file"),
+    )
+    decisions: Name | None = Field(
+        default=None,
+        description="Table of the stretches and channels that someone has decided to leave out; "
+        "absent: decisions.csv where the study folder has one.",
+        json_schema_extra=told("", "path of a .csv or .tsv file"),
     )
     mains_hz: Literal[50, 60] = Field(
         description="Mains frequency where the study was recorded.", json_schema_extra=told("Hz", "50 or 60")
