@@ -89,7 +89,7 @@ class FilterStage:
 
     def __str__(self) -> str:
         if self.type == "notch":
-            return f"notch at {self.mains_hz:g} Hz of width {self.width_hz:g} Hz"
+            return f"notch at {self.mains_hz or 0:g} Hz of width {self.width_hz or 0:g} Hz"
         cutoffs = " and ".join(f"{cutoff_hz:g}" for cutoff_hz in self.cutoff_hz)
         order = "" if self.order is None else f" of order {self.order}"
         return f"{self.type} at {cutoffs} Hz{order}"
