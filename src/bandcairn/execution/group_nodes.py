@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any, Literal
 import numpy as np
 
 from bandcairn.execution.epoch_nodes import EPOCH_COUNTS
+from bandcairn.execution.through_reference import OF_REFERENCE, failures_behind
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
@@ -84,7 +85,7 @@ def table_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame], keys
         told_of = {"recording": who["recording"], "participant": who["participant"], "node": keys[role]}
         told_of |= {f"{DESIGN}{factor}": level for factor, level in who["design"].items()}
         for row in frame_rows(parents[role]):
-            failed = failures.get((who["recording"], row["channel"]), [])
+            failed = failures_behind(failures, who["recording"], row["channel"], parameters.get("reference"))
             mine = [failure for failure in failed if concerns(failure, row)]
             rows.append({**row, **_judged(row, mine, exclude), **told_of})
     design = {f"{DESIGN}{factor}": "text" for factor in parameters["design"]}
@@ -126,7 +127,7 @@ def _judged(
 
 def consequence(failure: Mapping[str, Any]) -> str:
     """Return what decides about a failure: ``channel`` and ``band`` as the study says, ``advice`` never excludes."""
-    if failure["about"] == "intervals":
+    if failure["about"] in ("intervals", OF_REFERENCE):
         return "advice"
     return "band" if failure["measure"].split("/")[0] in OF_BANDS else "channel"
 

@@ -358,6 +358,8 @@ def _signal_nodes(
         "on_band_failure": signal.quality.on_band_failure,
         "rows": rows,
     }
+    if signal.reference is not None:
+        parameters["reference"] = _reference_recipe(signal.reference)
     table = make_node(
         "table",
         parameters=canonical_json(parameters),
