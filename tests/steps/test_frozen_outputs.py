@@ -22,6 +22,7 @@ import pytest
 
 from bandcairn.execution.compute import compute
 from bandcairn.execution.frames import epochs_to_frame, signal_to_frame, spectra_to_frame
+from bandcairn.execution.quality_nodes import verdict_node
 from bandcairn.nodes.catalogue import STEPS, VERSIONS
 from bandcairn.nodes.key import canonical_json
 from bandcairn.nodes.node import make_node
@@ -37,8 +38,8 @@ if TYPE_CHECKING:
     from bandcairn.execution.project import Project
 
 FROZEN = Path(__file__).with_name("frozen_outputs.json")
-# They compute no number: samples are read as they stand, rows are gathered and held against limits.
-WITHOUT_NUMBERS = {"load", "verdict", "table"}
+# They compute no number: samples are read as they stand, rows are gathered.
+WITHOUT_NUMBERS = {"load", "table"}
 # Between processors the last bits differ; nothing that a step means does.
 RTOL = 1e-9
 # A column with no more values than this is frozen value by value.
@@ -107,11 +108,38 @@ def node_of(step: str, parameters: Mapping[str, Any], **parents: Frame) -> Frame
 
 
 def quality() -> Iterator[Frame]:
-    """Yield clean, clipped and flat channels."""
-    rows = noise(1, 3, 250, 8)
+    """Yield clean, clipped, flat and copied channels, across a gap, behind a recorder with filters."""
+    rows = noise(1, 4, 250, 8)
+    rows[0] += 9 * np.sin(2 * np.pi * 49.9 * np.arange(rows.shape[1]) / 250)
     rows[1] = np.clip(rows[1], -20, 20)
     rows[2, 500:1200] = 7.0
-    yield node_of("quality", {}, signal=signal_to_frame(signal_of(rows, 250)))
+    rows[3] = rows[0]
+    parameters = {
+        "mains_hz": 50,
+        "prefilter": ["HP:0.5Hz LP:70Hz", "TC:0.3s", "LP 30 Hz ?", ""],
+        "lowpass_hz": 60,
+        "range_uv": [-400, 400],
+    }
+    yield node_of("quality", parameters, signal=signal_to_frame(signal_of(rows, 250, gap=True)))
+
+
+def verdict() -> Iterator[Frame]:
+    """Yield the verdicts on an EEG and on an ECG."""
+    frequencies_hz = np.arange(0, 64.25, 0.5)
+    measures = {"clipped_share": 0.02, "lsb_uv": 0.5, "smallest_step_uv": 4.0, "typical_rms_uv": 0.4}
+    measures |= {"recorder_highpass_hz": 0.5, "recorder_lowpass_hz": 30.0, "typical_peak_to_peak_uv": 900.0}
+    held = Frame(
+        {"frequency_hz": frequencies_hz, "density/A": 40 / (1 + frequencies_hz) ** 2},
+        {"rate_hz": "128", "channels": ["A"], "identical": {}, "measures": {"A": measures}},
+    )
+    limits = {"clipped_share": 0.01, "quantisation_margin_db": 10, "beyond_recorder_share": 0}
+    bands_hz = [["delta", 0.5, 4], ["gamma", 20, 45], ["", 0.5, 45]]
+    judged_by = {"signal": "s", "kind": "eeg", "bands_hz": bands_hz}
+    limits_of_eeg = {**limits, "typical_rms_uv": [1, 500]}
+    yield verdict_node({**judged_by, "limits": limits_of_eeg}, {"quality/r1": held}, {"quality/r1": "key"})
+    judged_by = {"signal": "s", "kind": "ecg", "bands_hz": [["", 0.5, None]], "resample_hz": 100}
+    limits |= {"beats_rate_hz": 250, "typical_peak_to_peak_uv": [50, 20000]}
+    yield verdict_node({**judged_by, "limits": limits}, {"quality/r1": held}, {"quality/r1": "key"})
 
 
 def resample() -> Iterator[Frame]:
@@ -284,6 +312,7 @@ def statistics() -> Iterator[Frame]:
 
 OUTPUTS = {
     "quality": quality,
+    "verdict": verdict,
     "resample": resample,
     "filter": filter_,
     "beats": beats,

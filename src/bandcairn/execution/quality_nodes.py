@@ -176,14 +176,8 @@ def _frame(signal: Signal, quality: Quality, measures: Mapping[str, Mapping[str,
             for channel, one in found
             if one.identical
         },
-        "stretches": [
-            [channel, kind, *place]
-            for channel, one in found
-            for kind, stretches in (("clipped", one.clipped), ("flat", one.flat))
-            for place in _longest(stretches, signal)
-        ],
-        "stretches_counted": {
-            channel: {"clipped": len(one.clipped.first), "flat": len(one.flat.first)}
+        "stretches": {
+            channel: {"clipped": _places(one.clipped, signal), "flat": _places(one.flat, signal)}
             for channel, one in found
         },
     }
@@ -191,17 +185,22 @@ def _frame(signal: Signal, quality: Quality, measures: Mapping[str, Mapping[str,
     return Frame({"frequency_hz": spectrum.frequencies_hz, **columns}, facts)
 
 
-def _longest(stretches: Stretches, signal: Signal) -> Iterator[tuple[float, float]]:
-    """Yield start and stop of the longest stretches, in seconds from the start of the file, in the order of time."""
+def _places(stretches: Stretches, signal: Signal) -> dict[str, Any]:
+    """Return the number of stretches, and when the longest start and stop, in the order of time.
+
+    Times are seconds from the start of the file, gaps included.
+    """
     rate_hz = float(signal.rate_hz)
     kept = np.sort(np.argsort(-stretches.n_samples, kind="stable")[:MOST_STRETCHES])
-    starts = np.array([run.first for run in signal.runs])
-    for first, stop in zip(stretches.first[kept].tolist(), stretches.stop[kept].tolist(), strict=True):
-        run = signal.runs[int(np.searchsorted(starts, first, side="right")) - 1]
-        yield (
-            float(run.start_s) + (first - run.first) / rate_hz,
-            float(run.start_s) + (stop - run.first) / rate_hz,
-        )
+    first, stop = stretches.first[kept], stretches.stop[kept]
+    run_first = np.array([run.first for run in signal.runs])
+    run_start_s = np.array([float(run.start_s) for run in signal.runs])
+    run = np.searchsorted(run_first, first, side="right") - 1
+    return {
+        "count": len(stretches.first),
+        "start_s": (run_start_s[run] + (first - run_first[run]) / rate_hz).tolist(),
+        "stop_s": (run_start_s[run] + (stop - run_first[run]) / rate_hz).tolist(),
+    }
 
 
 @dataclass(frozen=True, slots=True)
@@ -293,7 +292,11 @@ def _all_measured(frame: Frame, channel: str, parameters: Mapping[str, Any]) -> 
         upper_hz = min(used_hz / 2, rate_hz / 2 if high_hz is None else high_hz)
         if low_hz < upper_hz:
             about = "channel" if parameters["kind"] != "eeg" else "band" if band else "whole range"
-            yield from _of_band((band or None, low_hz, upper_hz, about), held, spectrum, rate_hz)
+            # A range without an upper end takes what the recorder gives, as one from 0 Hz does.
+            edges = held.get("recorder_highpass_hz"), held.get("recorder_lowpass_hz") if high_hz else None
+            band_of = (band or None, low_hz, upper_hz, about)
+            yield from _margins(band_of, held, spectrum, rate_hz)
+            yield from _beyond_recorder(band_of, edges)
     if parameters["kind"] == "ecg":
         # Each of three times is rounded with a variance of 1/(12 fs^2), the middle one counts twice: 1/(2 fs^2).
         floor_ms = 1000 / (used_hz * math.sqrt(2))
@@ -302,23 +305,31 @@ def _all_measured(frame: Frame, channel: str, parameters: Mapping[str, Any]) -> 
         yield _Measured("rmssd_floor_ms", floor_ms, about="intervals")
 
 
-def _of_band(
+def _margins(
     band: tuple[str | None, float, float, str], held: Mapping[str, float], spectrum: Spectrum, rate_hz: float
 ) -> Iterator[_Measured]:
-    """Yield what quantisation and recorder leave of one band."""
+    """Yield how far a band lies above the noise of the recorder's steps."""
     name, low_hz, high_hz, about = band
     # A channel that never moves has no step of its own: it is flat, and has no margin to speak of.
     seen_uv = held.get("smallest_step_uv")
-    if seen_uv is not None and spectrum.density.size:
-        step_uv = max(held.get("lsb_uv", 0.0), seen_uv)
-        margin = margin_db(spectrum, low_hz, high_hz, step_uv, rate_hz)
-        if margin is not None:
-            detail = f"steps of {step_uv:.3g} uV leave {noise_density(step_uv, rate_hz):.3g} uV^2/Hz"
-            yield _Measured("quantisation_margin_db", margin, name, about, detail)
-    edges = held.get("recorder_highpass_hz"), held.get("recorder_lowpass_hz")
-    if edges != (None, None):
-        loss = loss_db(low_hz, high_hz, *edges)
-        upper = "no limit" if edges[1] is None else f"{edges[1]:.3g} Hz"
-        detail = f"the recorder passes {edges[0] or 0:.3g} Hz to {upper}: a loss of {loss:.2g} dB or more"
-        yield _Measured("beyond_recorder_share", share_beyond(low_hz, high_hz, *edges), name, about, detail)
-        yield _Measured("recorder_loss_db", loss, name, about)
+    if seen_uv is None or not spectrum.density.size:
+        return
+    step_uv = max(held.get("lsb_uv", 0.0), seen_uv)
+    margin = margin_db(spectrum, low_hz, high_hz, step_uv, rate_hz)
+    if margin is not None:
+        detail = f"steps of {step_uv:.3g} uV leave {noise_density(step_uv, rate_hz):.3g} uV^2/Hz"
+        yield _Measured("quantisation_margin_db", margin, name, about, detail)
+
+
+def _beyond_recorder(
+    band: tuple[str | None, float, float, str], edges_hz: tuple[float | None, float | None]
+) -> Iterator[_Measured]:
+    """Yield how much of a band the recorder has not passed."""
+    name, low_hz, high_hz, about = band
+    if edges_hz == (None, None):
+        return
+    loss = loss_db(low_hz, high_hz, *edges_hz)
+    upper = "no limit" if edges_hz[1] is None else f"{edges_hz[1]:.3g} Hz"
+    detail = f"the recorder passes {edges_hz[0] or 0:.3g} Hz to {upper}: a loss of {loss:.2g} dB or more"
+    yield _Measured("beyond_recorder_share", share_beyond(low_hz, high_hz, *edges_hz), name, about, detail)
+    yield _Measured("recorder_loss_db", loss, name, about)
