@@ -66,7 +66,7 @@ def guessed_channels(facts: FileFacts) -> tuple[FoundChannel, ...]:
 
 def fits_tables(file: str) -> str:
     """Return why a path cannot stand in the recordings table; empty where it can."""
-    from bandcairn.study.tables import lies_inside
+    from bandcairn.study.sheet import lies_inside
 
     return "" if lies_inside(file) else "its path holds a backslash or an unprintable character"
 

@@ -18,11 +18,11 @@ from bandcairn.study.question_checks import (
     check_segment,
     check_signal_named,
 )
+from bandcairn.study.sheet import lies_inside
 from bandcairn.study.signal_checks import check_segment_names, check_signal
 from bandcairn.study.tables import (
     RecordingsTable,
     SegmentsTable,
-    lies_inside,
     read_recordings,
     read_segments,
 )

@@ -278,11 +278,11 @@ def _duration_s(study: LoadedStudy, facts: FileFacts) -> float | None:
 
 def _check_epoch(case: _Case) -> Iterator[Problem]:
     longest_s = max(_stretches_s(case), default=None)
-    length_s = case.signal.epoch.length_s
+    length_s, key = case.signal.epoch.window_s, case.signal.epoch.window_key
     if longest_s is not None and length_s > longest_s + _SLACK_S:
         allowed = f"at most {longest_s:g} s, the longest stretch of this recording"
         remedy = "Shorten the epoch, or leave the recording out."
-        yield case.refuse("epoch", "length_s", found=f"{length_s:g} s", allowed=allowed, remedy=remedy)
+        yield case.refuse("epoch", key, found=f"{length_s:g} s", allowed=allowed, remedy=remedy)
 
 
 def _check_fir_length(case: _Case) -> Iterator[Problem]:

@@ -180,18 +180,19 @@ _ENDS_OF_INTERVALS_S = 4.0
 
 
 def _check_resolution(path: Path, signal: AnySignal) -> Iterator[Fault]:
-    epoch_s, segment_s = signal.epoch.length_s, signal.spectrum.segment_s
+    epoch_s, segment_s = signal.epoch.window_s, signal.spectrum.segment_s
+    epoch_key = "epoch.length_s" if signal.epoch.length_s is not None else "the epoch from start_s to stop_s"
     longest_s = epoch_s - _ENDS_OF_INTERVALS_S if isinstance(signal, EcgSignal) else epoch_s
     if segment_s is not None and segment_s > longest_s:
-        allowed = f"at most epoch.length_s, {epoch_s:g} s"
+        allowed = f"at most {epoch_key}, {epoch_s:g} s"
         if longest_s < epoch_s:
-            allowed = f"at most {longest_s:g} s: epoch.length_s less an interval between beats at either end"
+            allowed = f"at most {longest_s:g} s: {epoch_key} less an interval between beats at either end"
         remedy = "Shorten the segment, or lengthen the epoch."
         yield Fault((*path, "spectrum", "segment_s"), f"{segment_s:g} s", allowed, remedy)
     if isinstance(signal, EmgSignal):
         return
     bin_hz = 1 / (segment_s or epoch_s)
-    source = "spectrum.segment_s" if segment_s else "epoch.length_s"
+    source = "spectrum.segment_s" if segment_s else epoch_key
     for band in declared_ranges(str(path[1]), signal):
         width_hz = band.high_hz - band.low_hz
         # A hair of slack: 0.15 - 0.04 is not exactly 0.11 in binary.
