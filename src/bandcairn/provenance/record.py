@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from bandcairn.nodes.node import Node
 
 # The packages whose code may touch a number. Recorded, never keyed: bits differ between processors anyway.
-_PACKAGES = ("bandcairn", "numpy", "scipy", "pyarrow", "pandas", "edfio", "snakemake")
+_PACKAGES = ("bandcairn", "numpy", "scipy", "pyarrow", "pandas", "edfio", "mne", "snakemake")
 
 
 def make_record(node: Node, started: datetime, seconds: float) -> dict[str, Any]:
