@@ -13,7 +13,7 @@ from bandcairn.steps.spectrum import Spectrum
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from numpy.typing import NDArray
 
@@ -36,18 +36,34 @@ def signal_to_frame(signal: Signal, **facts: Any) -> Frame:  # noqa: ANN401 - JS
 def frame_to_signal(frame: Frame) -> Signal:
     """Return the signal of a load, resample or filter node."""
     channels = tuple(frame.facts["channels"])
-    samples = np.empty((len(channels), len(frame.numbers(channels[0]))))
-    gains = frame.facts.get("gain_uv", [None] * len(channels))
-    offsets = frame.facts.get("offset_uv", [None] * len(channels))
-    for row, channel, gain, offset in zip(samples, channels, gains, offsets, strict=True):
-        column = frame.numbers(channel)
-        if gain is None:
-            row[:] = column
-        else:
-            np.multiply(column, gain, out=row)
-            np.add(row, offset, out=row)
+    columns = [frame.numbers(channel) for channel in channels]
+    gains = frame.facts.get("gain_uv")
+    samples = _rows(columns) if gains is None else _scaled(columns, gains, frame.facts["offset_uv"])
     runs = tuple(Run(first, stop, Fraction(start)) for first, stop, start in frame.facts["runs"])
     return Signal(samples, Fraction(frame.facts["rate_hz"]), channels, runs)
+
+
+def _rows(columns: Sequence[NDArray[np.float64]]) -> NDArray[np.float64]:
+    """Return columns as the rows of one array; no copy if that is what they are, as in a node just made."""
+    if len(columns) == 1:
+        return columns[0][np.newaxis]
+    whole = columns[0].base
+    if isinstance(whole, np.ndarray) and whole.ndim == 2 and len(whole) == len(columns):
+        places = [row.__array_interface__ for row in whole]
+        if places == [column.__array_interface__ for column in columns]:
+            return whole
+    return np.stack(columns)
+
+
+def _scaled(
+    columns: Sequence[NDArray[Any]], gains: Sequence[float], offsets: Sequence[float]
+) -> NDArray[np.float64]:
+    """Return the samples of a load node in microvolt, one row a column."""
+    samples = np.empty((len(columns), len(columns[0])))
+    for row, column, gain, offset in zip(samples, columns, gains, offsets, strict=True):
+        np.multiply(column, gain, out=row)
+        np.add(row, offset, out=row)
+    return samples
 
 
 def _signal_facts(rate_hz: Fraction, channels: tuple[str, ...], runs: tuple[Run, ...]) -> dict[str, Any]:

@@ -77,7 +77,15 @@ def data_digest(frame: Frame) -> str:
 
 
 def _hash_floats(digest: Any, column: NDArray[np.floating]) -> None:  # noqa: ANN401 - hashlib's own type is private
+    buffer = np.empty(min(_CHUNK, len(column)), column.dtype)
     for start in range(0, len(column), _CHUNK):
-        chunk = column[start : start + _CHUNK] + 0.0  # -0.0 + 0.0 is 0.0
-        chunk[np.isnan(chunk)] = np.nan
+        part = column[start : start + _CHUNK]
+        chunk = np.add(part, 0.0, out=buffer[: len(part)])  # -0.0 + 0.0 is 0.0
+        if has_nan(chunk):
+            chunk[np.isnan(chunk)] = np.nan
         digest.update(chunk.data)
+
+
+def has_nan(column: NDArray[Any]) -> bool:
+    """Tell whether floats hold a NaN: their minimum is one then, which takes no mask to find out."""
+    return bool(np.isnan(np.min(column, initial=np.inf)))

@@ -15,7 +15,7 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 
-from bandcairn.store.frame import Frame
+from bandcairn.store.frame import Frame, has_nan
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -41,16 +41,19 @@ def write_frame(path: Path, frame: Frame, record: Mapping[str, Any]) -> None:
     metadata = {_FACTS: json.dumps(dict(frame.facts)), _RECORD: told, _RECORD_SHA256: _sha256(told)}
     table = pa.Table.from_arrays(arrays, schema=pa.schema(fields, metadata))
     packed = {field.name: "DELTA_BINARY_PACKED" for field in fields if pa.types.is_integer(field.type)}
-    pq.write_table(
-        table,
-        path,
-        use_dictionary=False,
-        compression="none",
-        write_statistics=False,
-        column_encoding=packed or None,
-        data_page_size=64 << 20,
-        row_group_size=_WHOLE_FILE,
-    )
+    # A file that is already open spares the search for a file system, which small nodes would feel.
+    with pa.OSFile(str(path), "wb") as file:
+        pq.write_table(
+            table,
+            file,
+            use_dictionary=False,
+            compression="none",
+            write_statistics=False,
+            column_encoding=packed or None,
+            data_page_size=64 << 20,
+            write_batch_size=1 << 16,
+            row_group_size=_WHOLE_FILE,
+        )
 
 
 def read_frame(path: Path) -> tuple[Frame, dict[str, Any]]:
@@ -61,7 +64,7 @@ def read_frame(path: Path) -> tuple[Frame, dict[str, Any]]:
     OSError, pyarrow.ArrowException, KeyError, TypeError, ValueError
         If the file is no whole node, or its record does not match the digest written with it.
     """
-    with pq.ParquetFile(path, memory_map=True) as file:
+    with pa.memory_map(str(path)) as source, pq.ParquetFile(source, pre_buffer=False) as file:
         table = file.read(use_threads=False)
     metadata = table.schema.metadata or {}
     columns = {name: _from_arrow(table.column(name)) for name in table.column_names}
@@ -87,7 +90,7 @@ def _sha256(content: bytes) -> bytes:
 def _to_arrow(column: Column) -> pa.Array:
     if isinstance(column, tuple):
         return pa.array(column, pa.string())
-    if column.dtype.kind == "f" and np.isnan(column).any():
+    if column.dtype.kind == "f" and has_nan(column):
         return pa.array(column, from_pandas=True)
     return pa.array(np.ascontiguousarray(column))
 

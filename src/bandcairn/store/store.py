@@ -145,5 +145,6 @@ def _equal(first: Any, second: Any) -> bool:  # noqa: ANN401 - a column of eithe
         return bool(first == second)
     if isinstance(first, tuple) or first.dtype != second.dtype:
         return False
-    nullable = second.dtype.kind == "f" and np.isnan(second).any()
-    return bool(np.array_equal(first, second, equal_nan=nullable))
+    if np.array_equal(first, second):
+        return True
+    return second.dtype.kind == "f" and bool(np.array_equal(first, second, equal_nan=True))
