@@ -352,7 +352,7 @@ def _signal_nodes(
         parents=tuple(keys["quality"]),
         signal=name,
     )
-    parameters = {
+    parameters: dict[str, Any] = {
         "design": design_columns(study),
         "on_failure": signal.quality.on_failure,
         "on_band_failure": signal.quality.on_band_failure,
