@@ -38,7 +38,7 @@ MISTAKES = {
         "line 12",
         "signals.eeg.epoch.overlpa",
         "unknown key overlpa",
-        "length_s, overlap, reject",
+        "length_s, overlap, around, start_s, stop_s, keep_edges, least, reject",
         "Did you mean overlap?",
     ),
     "mains frequency absent": Mistake(

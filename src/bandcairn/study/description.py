@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 from bandcairn.errors import Problem, StudyError
 from bandcairn.study.document import read_document
 from bandcairn.study.faults import STUDY_FILE, Fault, place, suggestion
+from bandcairn.study.mark_checks import MarkTables
 from bandcairn.study.question_checks import (
     Design,
     check_columns,
@@ -29,10 +30,11 @@ from bandcairn.study.tables import (
 from bandcairn.study.validation import understand
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator, Mapping
+    from collections.abc import Iterable, Iterator, Mapping
     from pathlib import Path
 
     from bandcairn.study.document import Document
+    from bandcairn.study.marks import DecisionRow, EventRow
     from bandcairn.study.models import StudyDescription
     from bandcairn.study.tables import RecordingRow, SegmentRow
     from bandcairn.study.validation import Understood
@@ -59,6 +61,12 @@ class LoadedStudy:
         Name of the segments table; None where there is none.
     lines : Mapping of str to int
         Line of each key of study.yaml by its path, ``signals.eeg.filter[0].cutoff_hz``.
+    events : tuple of EventRow
+        In the order of the table; empty where there is none.
+    events_file : str or None
+        Name of the events table; None where there is none: then events are annotations of the files.
+    decisions : tuple of DecisionRow
+        In the order of the table; empty where there is none.
     """
 
     folder: Path
@@ -67,6 +75,9 @@ class LoadedStudy:
     segments: tuple[SegmentRow, ...]
     segments_file: str | None
     lines: Mapping[str, int]
+    events: tuple[EventRow, ...] = ()
+    events_file: str | None = None
+    decisions: tuple[DecisionRow, ...] = ()
 
     def where(self, *path: str | int) -> str:
         """Return ``"line 12"`` for a key of study.yaml, or for the nearest key above one that is absent."""
@@ -93,14 +104,19 @@ def load_study(folder: Path) -> LoadedStudy:
     document = _read_description(folder)
     content = _mapping(document)
     tables = _Tables.read(folder, content)
+    marks = MarkTables.read(folder, content)
     understood = understand(content)
     readable = bool(tables.segments.cells) or not tables.segments.problems
     mains_hz = content.get("mains_hz") if content.get("mains_hz") in (50, 60) else None
     design = tables.design(content)
-    findings = _inconsistencies(understood, design, mains_hz, segments_readable=readable)
+    names = [cells["recording"] for _, cells in tables.recordings.cells]
+    findings = (
+        *_inconsistencies(understood, design, mains_hz, segments_readable=readable),
+        *marks.problems(tables.recordings_file, names, understood),
+    )
     problems = (
         *document.problems,
-        *(fault.placed(document.lines) for fault in (*understood.faults, *tables.faults)),
+        *(fault.placed(document.lines) for fault in (*understood.faults, *tables.faults, *marks.faults)),
         *tables.recordings.problems,
         *tables.segments.problems,
         *_missing_files(folder, tables),
@@ -109,8 +125,17 @@ def load_study(folder: Path) -> LoadedStudy:
     )
     if problems or understood.description is None:
         raise StudyError(tuple(dict.fromkeys(problems)))
-    rows, segments = tables.recordings.rows, tables.segments.rows
-    return LoadedStudy(folder, understood.description, rows, segments, tables.segments_file, document.lines)
+    return LoadedStudy(
+        folder,
+        understood.description,
+        tables.recordings.rows,
+        tables.segments.rows,
+        tables.segments_file,
+        document.lines,
+        marks.events.rows,
+        marks.events_file,
+        marks.decisions.rows,
+    )
 
 
 def _read_description(folder: Path) -> Document:
@@ -214,7 +239,7 @@ def _unknown_recordings(tables: _Tables) -> Iterator[Problem]:
             yield Problem(str(tables.segments_file), where, "recording", row.recording, allowed, remedy)
 
 
-def _placed(findings: Iterator[Fault | Problem], document: Document) -> Iterator[Problem]:
+def _placed(findings: Iterable[Fault | Problem], document: Document) -> Iterator[Problem]:
     for finding in findings:
         yield finding.placed(document.lines) if isinstance(finding, Fault) else finding
 

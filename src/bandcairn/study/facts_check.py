@@ -95,6 +95,7 @@ def check_facts(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> tuple[Pro
         problems += [problem for case in cases for problem in _check_case(case)]
         problems += _check_common_rate(cases)
     problems += _check_annotations(study, facts)
+    problems += _check_events(study, facts)
     return tuple(dict.fromkeys(problems))
 
 
@@ -379,3 +380,16 @@ def _check_annotations(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> It
             found = f"{text}, which lasts 0 s wherever it stands"
             remedy = "Declare the stretches in a segments table."
             yield Fault(path, found, "an annotation with a duration", remedy).placed(study.lines)
+
+
+def _check_events(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> Iterator[Problem]:
+    """Yield the events that epochs are to lie about and no file holds; a table of events has been checked already."""
+    if study.events_file is not None or not facts:
+        return
+    texts = tuple(dict.fromkeys(note.text for file in facts.values() for note in file.annotations))
+    for name, signal in study.description.signals.items():
+        for event in signal.epoch.events:
+            if event not in texts:
+                allowed = f"a text of the files' annotations: {listed(texts[:20])}"
+                remedy = suggestion(event, texts, "Correct the text, or write the events into events.csv.")
+                yield Fault(("signals", name, "epoch", "around"), event, allowed, remedy).placed(study.lines)
