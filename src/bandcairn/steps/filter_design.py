@@ -36,6 +36,7 @@ if TYPE_CHECKING:
 
 # Transition width times length, in sampling rates [5]_.
 TRANSITION_TIMES_LENGTH = {"hann": 3.1, "hamming": 3.3, "blackman": 5.5}
+_HAIR = 1e-9  # 3.1 x 250 / 5 is 155 taps, though a last bit makes it more
 _FAMILIES = {
     "butterworth": "butter",
     "chebyshev1": "cheby1",
@@ -169,10 +170,10 @@ def n_taps(stage: FilterStage, rate_hz: float) -> int:
     if stage.window is None:
         attenuation_db = stage.attenuation_db or 0.0
         width = 2 * math.pi * (stage.transition_hz or 0.0) / rate_hz
-        length = math.ceil((attenuation_db - 7.95) / (2.285 * width)) + 1
+        length = math.ceil((attenuation_db - 7.95) / (2.285 * width) - _HAIR) + 1
     else:
         share = (stage.transition_hz or 0.0) / rate_hz
-        length = math.ceil(TRANSITION_TIMES_LENGTH[stage.window] / share)
+        length = math.ceil(TRANSITION_TIMES_LENGTH[stage.window] / share - _HAIR)
     return max(3, length | 1)
 
 
