@@ -74,15 +74,15 @@ def test_p6_bytes_behind_the_last_record_are_dropped_and_counted(sound: Path) ->
     assert digital(sound) == SAMPLES.tolist()
 
 
-def test_p6_a_record_too_many_is_dropped_and_two_are_refused(sound: Path) -> None:
+def test_p6_a_record_too_many_is_dropped_and_three_are_refused(sound: Path) -> None:
     """The header's number holds, within the share."""
     more = record_bytes(sound)
     whole = sound.read_bytes()
     sound.write_bytes(whole + b"\x11" * more)
     assert inspect(sound).repair == Repair(100, 101, more)
     assert digital(sound) == SAMPLES.tolist()
-    sound.write_bytes(whole + b"\x11" * 2 * more)
-    with pytest.raises(RecordingError, match="says 100 data records, 102 found"):
+    sound.write_bytes(whole + b"\x11" * 3 * more)
+    with pytest.raises(RecordingError, match="says 100 data records, 103 found"):
         digital(sound)
 
 

@@ -207,7 +207,7 @@ def _kept(path: Path, raw: Any, rate_hz: Fraction) -> tuple[Piece, ...]:  # noqa
             start = round((note["onset"] - raw.first_time) * float(rate_hz))
             pieces.append((first, start))
             first = start + round(note["duration"] * float(rate_hz))
-    pieces.append((first, raw.n_times))
+    pieces.append((first, int(raw.n_times)))
     return tuple(Piece(first, stop, first / rate_hz) for first, stop in pieces if stop > first)
 
 
@@ -218,11 +218,13 @@ def _segments(
     rate_hz: Fraction,
 ) -> tuple[Piece, ...]:
     """Return the segments of a BrainVision file at the times of their dates."""
-    stops = [*(first for first, _ in starts[1:]), raw.n_times]
+    n_samples = int(raw.n_times)
+    stops = [*(first for first, _ in starts[1:]), n_samples]
     pieces: list[Piece] = []
     for (first, start_s), stop in zip(starts, stops, strict=True):
-        if not first < stop <= raw.n_times:
-            found = f"a new segment at sample {first + 1} of {raw.n_times}"
+        if not first < stop <= n_samples:
+            at = stop if stop > n_samples else first
+            found = f"a new segment at sample {at + 1} of {n_samples}"
             raise refusal(path, found, "segments in order", "Restore the original file of markers.")
         if pieces:
             end_s = pieces[-1].start_s + (pieces[-1].stop - pieces[-1].first) / rate_hz
