@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import shutil
 import time
 from typing import TYPE_CHECKING
 
@@ -132,11 +133,61 @@ def test_annotated_stretches_become_segments_where_the_study_says_so(
     (small_study / "segments.csv").unlink()
     edit_study(small_study, "mains_hz: 50", "mains_hz: 50\nsegments: {annotations: [hold]}")
     marks = (Annotation(10, 30, "hold"), Annotation(45, 5, "other"))
-    for file in (small_study / "raw").iterdir():
+    for value, file in enumerate((small_study / "raw").iterdir()):
         channels = [
-            ExportChannel(label, "uV", rate_hz, np.ones(60 * rate_hz), (-400, 400))
+            ExportChannel(label, "uV", rate_hz, np.full(60 * rate_hz, value), (-400, 400))
             for label, rate_hz in (("Fz", 256), ("Cz", 256), ("ECG", 256), ("EMG", 1000))
         ]
         write_edf(file, channels, marks)
     survey = survey_study(load_study(small_study), small_study / "nodes")
     assert survey.contents["p1_day"].annotated_segments == (("hold", 10.0, 40.0),)
+
+
+def test_the_same_content_under_two_names_is_refused_with_both(small_study: Path) -> None:
+    """One night entered twice would count as two: the names of both recordings, files and rows are told."""
+    shutil.copyfile(small_study / "raw/p1_day.edf", small_study / "raw/p2_night.edf")
+    told = (
+        r"recordings\.csv, row 5, column file: file: found p2_night \(raw/p2_night\.edf\) with the same samples as "
+        r"p1_day \(raw/p1_day\.edf, row 2\)"
+    )
+    with pytest.raises(StudyError, match=told):
+        survey_study(load_study(small_study), small_study / "nodes")
+
+
+def test_the_same_content_is_accepted_where_the_study_says_why(
+    small_study: Path, edit_study: Callable[[Path, str, str], None]
+) -> None:
+    """The reason stands in the study."""
+    shutil.copyfile(small_study / "raw/p1_day.edf", small_study / "raw/p2_night.edf")
+    edit_study(small_study, "mains_hz: 50", "mains_hz: 50\naccept_same_content: a drill of the pipeline")
+    assert len(survey_study(load_study(small_study), small_study / "nodes").contents) == 4
+
+
+@pytest.mark.parametrize(("stop_s", "start_s", "refused"), [(30, 30, False), (31, 30, True), ("", 30, True)])
+def test_stretches_of_one_file_are_two_recordings_unless_they_overlap(
+    small_study: Path, stop_s: object, start_s: object, *, refused: bool
+) -> None:
+    """Before and after a moment of one file is fair; a second in common is the same second twice."""
+    (small_study / "segments.csv").write_text("recording,segment,start_s,stop_s\n", "utf-8")
+    text = (small_study / "study.yaml").read_text("utf-8")
+    # Short enough for half a minute; of the intervals between beats only the fast rhythm is resolved.
+    for before, after in (
+        ("segments: [hold]", "segments: []"),
+        ("epoch: {length_s: 60}", "epoch: {length_s: 20}"),
+        ("segment_s: 30}", "segment_s: 10}\n    features: {bands_hz: {hf: [0.15, 0.4]}}"),
+    ):
+        text = text.replace(before, after)
+    (small_study / "study.yaml").write_text(text, "utf-8")
+    rows = ["recording,participant,file,condition,group,start_s,stop_s"]
+    rows += [
+        f"p1_day,p1,raw/p1_day.edf,day,crew,,{stop_s}",
+        f"p1_night,p1,raw/p1_day.edf,night,crew,{start_s},",
+        "p2_day,p2,raw/p2_day.edf,day,office,,",
+        "p2_night,p2,raw/p2_night.edf,night,office,,",
+    ]
+    (small_study / "recordings.csv").write_text("\n".join(rows) + "\n", "utf-8")
+    if refused:
+        with pytest.raises(StudyError, match=r"p1_night .* with the same samples as p1_day"):
+            survey_study(load_study(small_study), small_study / "nodes")
+    else:
+        assert len(survey_study(load_study(small_study), small_study / "nodes").contents) == 4

@@ -9,6 +9,7 @@ from fractions import Fraction
 from typing import TYPE_CHECKING
 
 from bandcairn.errors import RecordingError, StudyError
+from bandcairn.nodes.twins import check_twins
 from bandcairn.recordings import RawIndex, check_repair, parts_of, survey
 from bandcairn.study.aliases import labels_for
 from bandcairn.study.facts_check import check_facts
@@ -113,7 +114,7 @@ def survey_study(study: LoadedStudy, store: Path, progress: Progress | None = No
     Raises
     ------
     StudyError
-        With every way in which the study does not fit its files.
+        With every way in which the study does not fit its files, or every pair of recordings of the same content.
     """
     index = RawIndex.load(store / INDEX_NAME)
     facts, unreadable = inspect_files(study, index)
@@ -131,6 +132,9 @@ def survey_study(study: LoadedStudy, store: Path, progress: Progress | None = No
             digests = {channel.label: channel.sha256 for channel in result.content.channels}
             labels = _aliased(study, result.facts)
             contents[recording] = RawContent(result.facts, digests, _annotated(study, result.facts), labels)
+    twins = check_twins(study, contents)
+    if twins:
+        raise StudyError(twins)
     return Survey(contents, unreadable, paths, states)
 
 

@@ -458,6 +458,11 @@ class StudyDescription(Block):
         "wins where a file has it.",
         json_schema_extra=told("", "names, each with a list of labels; no label under two names"),
     )
+    accept_same_content: Name | None = Field(
+        default=None,
+        description="Why two recordings may hold the very same samples; absent: that is refused.",
+        json_schema_extra=told("", "the reason, in words"),
+    )
     load: Load = Field(
         default=Load(),
         description="What files do not say of themselves, for every signal without a load block of its own.",
