@@ -132,9 +132,9 @@ def verdict() -> Iterator[Frame]:
         {"frequency_hz": frequencies_hz, "density/A": 40 / (1 + frequencies_hz) ** 2},
         {"rate_hz": "128", "channels": ["A"], "identical": {}, "measures": {"A": measures}},
     )
-    limits = {"clipped_share": 0.01, "quantisation_margin_db": 10, "beyond_recorder_share": 0}
+    limits: dict[str, Any] = {"clipped_share": 0.01, "quantisation_margin_db": 10, "beyond_recorder_share": 0}
     bands_hz = [["delta", 0.5, 4], ["gamma", 20, 45], ["", 0.5, 45]]
-    judged_by = {"signal": "s", "kind": "eeg", "bands_hz": bands_hz}
+    judged_by: dict[str, Any] = {"signal": "s", "kind": "eeg", "bands_hz": bands_hz}
     limits_of_eeg = {**limits, "typical_rms_uv": [1, 500]}
     yield verdict_node({**judged_by, "limits": limits_of_eeg}, {"quality/r1": held}, {"quality/r1": "key"})
     judged_by = {"signal": "s", "kind": "ecg", "bands_hz": [["", 0.5, None]], "resample_hz": 100}

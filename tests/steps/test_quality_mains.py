@@ -41,7 +41,7 @@ def test_c2_noise_without_mains_has_no_line_and_is_not_refused() -> None:
     for seed in range(20):
         for length_s in (4, 30, 120):
             for declared in (50, 60):
-                mains = assess(signal_of(noise(length_s, seed)), declared).channels[0].mains  # type: ignore[arg-type]
+                mains = assess(signal_of(noise(length_s, seed)), declared).channels[0].mains
                 assert mains is not None
                 assert mains.told_by is None
                 assert mains.rms_uv == 0
