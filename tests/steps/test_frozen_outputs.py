@@ -151,8 +151,16 @@ def resample() -> Iterator[Frame]:
     )
 
 
+def reference() -> Iterator[Frame]:
+    """Yield all three kinds of reference."""
+    signal = signal_to_frame(signal_of(noise(17, 3, 250, 4), 250, gap=True))
+    yield node_of("reference", {"reference": "average"}, signal=signal)
+    yield node_of("reference", {"reference": ["B", "C"]}, signal=signal)
+    yield node_of("reference", {"pairs": [["C-A", "C", "A"], ["A-B", "A", "B"]]}, signal=signal)
+
+
 def filter_() -> Iterator[Frame]:
-    """Yield every type and both phases, across a gap."""
+    """Yield every type, both phases and every design, across a gap."""
     stages = [
         {"type": "bandpass", "cutoff_hz": [1, 40], "order": 4, "phase": "zero"},
         {"type": "bandstop", "cutoff_hz": [48, 52], "order": 2, "phase": "zero"},
@@ -163,6 +171,20 @@ def filter_() -> Iterator[Frame]:
     yield node_of(
         "filter", {"stages": [{"design": "butterworth", **stage} for stage in stages]}, signal=signal
     )
+    notch = {"design": "butterworth", "order": 2, "width_hz": 2, "harmonics": True, "mains_hz": 50}
+    high = {"type": "highpass", "cutoff_hz": 1, "order": 3}
+    low = {"type": "lowpass", "cutoff_hz": 60, "order": 4}
+    band = {"type": "bandpass", "cutoff_hz": [2, 70], "design": "fir", "transition_hz": 2}
+    others = [
+        {"type": "notch", **notch},
+        {**high, "design": "bessel", "corrected": True},
+        {**low, "design": "elliptic", "ripple_db": 0.5, "attenuation_db": 50},
+        {**low, "design": "chebyshev1", "ripple_db": 0.5, "phase": "causal"},
+        {**high, "design": "chebyshev2", "attenuation_db": 40, "phase": "causal"},
+        {**band, "window": "hamming"},
+        {**band, "attenuation_db": 60, "phase": "causal"},
+    ]
+    yield node_of("filter", {"stages": [{"phase": "zero", **stage} for stage in others]}, signal=signal)
 
 
 def beats() -> Iterator[Frame]:
@@ -314,6 +336,7 @@ OUTPUTS = {
     "quality": quality,
     "verdict": verdict,
     "resample": resample,
+    "reference": reference,
     "filter": filter_,
     "beats": beats,
     "epoch": epoch,
