@@ -47,6 +47,7 @@ def epoch_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -> F
         "edge_start_s": float(edges.start_samples / signal.rate_hz),
         "edge_stop_s": float(edges.stop_samples / signal.rate_hz),
         "channels_by_decision": list(left_out.channels),
+        "left_out_in_average": parameters.get("decisions", {}).get("in_average", []),
     }
     return epochs_to_frame(epochs, signal, tuple(starts.items()), **facts)
 
@@ -85,6 +86,12 @@ def why_missing(channel: str, kept: int, parameters: Mapping[str, Any], epochs: 
     if kept < least:
         return f"{kept} epochs kept, fewer than the least of {least}"
     return None
+
+
+def note_of_average(channel: str, epochs: Frame) -> str | None:
+    """Return which channels the average reference of a channel holds although a decision leaves them out."""
+    others = [name for name in epochs.facts.get("left_out_in_average", []) if name != channel]
+    return f"its average reference holds {', '.join(others)}, left out by decision" if others else None
 
 
 def _cut(

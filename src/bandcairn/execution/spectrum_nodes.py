@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from bandcairn.execution.epoch_nodes import epoch_counts, why_missing
+from bandcairn.execution.epoch_nodes import epoch_counts, note_of_average, why_missing
 from bandcairn.execution.frames import (
     frame_to_epochs,
     frame_to_signal,
@@ -146,8 +146,9 @@ def features_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame]) -
             missing = why_missing(
                 channel, int(np.count_nonzero(reason == KEPT)), parameters, parents["epochs"]
             )
+            note = note_of_average(channel, parents["epochs"])
             told = {"channel": channel, "segment": name or None, **counts}
-            rows += [{**told, **_feature(value, row, reason, missing)} for value in values]
+            rows += [{**told, **_feature(value, row, reason, (missing, note))} for value in values]
     return Frame({name: _column([row[name] for row in rows]) for name in rows[0]})
 
 
@@ -235,8 +236,11 @@ def _length_s(epochs: Frame) -> float:
     return float(epochs.facts["length"] / Fraction(epochs.facts["rate_hz"]))
 
 
-def _feature(value: FeatureValue, row: int, reason: NDArray[np.int8], missing: str | None) -> dict[str, Any]:
-    """Return one feature of one channel; the counts of epochs stand beside it."""
+def _feature(
+    value: FeatureValue, row: int, reason: NDArray[np.int8], told: tuple[str | None, str | None]
+) -> dict[str, Any]:
+    """Return one feature of one channel; `told` is why it has no value whatever, and what else is to be noted."""
+    missing, note = told
     return {
         "feature": value.feature,
         "band": value.band or None,
@@ -244,7 +248,7 @@ def _feature(value: FeatureValue, row: int, reason: NDArray[np.int8], missing: s
         "unit": value.unit,
         "epochs_used": int(np.count_nonzero(reason == KEPT)),
         "epochs_total": len(reason),
-        "note": missing or value.note[row] or None,
+        "note": missing or "; ".join(filter(None, (value.note[row], note))) or None,
     }
 
 

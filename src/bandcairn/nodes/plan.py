@@ -12,6 +12,12 @@ from functools import cache
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.nodes.key import canonical_json
+from bandcairn.nodes.marks import (
+    decisions_by_recording,
+    events_by_recording,
+    onsets,
+    recipe_of_decisions,
+)
 from bandcairn.nodes.node import Node, make_node
 from bandcairn.study.facts_check import declared_unit
 from bandcairn.study.reference_blocks import BipolarPairs
@@ -170,12 +176,14 @@ class _SignalChain:
         self.filter = canonical_json({"stages": [_stage_recipe(stage, mains_hz) for stage in signal.filter]})
         self.reference = canonical_json(_reference_recipe(signal.reference)) if signal.reference else None
         self.spectrum = canonical_json({"kind": signal.kind, **_recipe(signal.spectrum)})
-        self.features = canonical_json({"kind": signal.kind, **_recipe(signal.features)})
+        self.features = canonical_json({"kind": signal.kind, **_recipe(signal.features), **_least(signal)})
         self.mains_hz = study.description.mains_hz
         self.load_parameters = cache(self._load_parameters)
         self.quality_parameters = cache(self._quality_parameters)
         self.epoch_parameters = cache(self._epoch_parameters)
         self.segments = _segments_by_recording(study)
+        self.events = events_by_recording(study)
+        self.decisions = decisions_by_recording(study)
 
     def nodes(self, row: RecordingRow, content: RawContent) -> Iterator[Node]:
         """Yield the nodes of one recording, parents first."""
@@ -220,7 +228,7 @@ class _SignalChain:
     def _from_samples_to_features(
         self, make: Callable[..., Node], samples: str, row: RecordingRow, content: RawContent
     ) -> Iterator[Node]:
-        epoch = make("epoch", self.epoch_parameters(self._segments(row, content)), signal=samples)
+        epoch = make("epoch", self._epoch_recipe(row, content), signal=samples)
         if self.signal.kind == "ecg":
             beats = make("beats", "{}", signal=samples)
             yield beats
@@ -290,8 +298,23 @@ class _SignalChain:
             stated["accept_other_mains"] = self.signal.quality.accept_other_mains
         return canonical_json(stated)
 
-    def _epoch_parameters(self, segments: tuple[tuple[str, float, float], ...]) -> str:
-        return canonical_json({**_recipe(self.signal.epoch), "segments": segments})
+    def _epoch_recipe(self, row: RecordingRow, content: RawContent) -> str:
+        """Return the recipe of a recording's epochs; of events and decisions only those that touch it."""
+        segments = self._segments(row, content)
+        marks: dict[str, Any] = {}
+        if self.signal.epoch.events:
+            listed = None if self.events is None else self.events.get(row.recording, ())
+            marks["events"] = onsets(self.signal.epoch.events, listed, content)
+        decided = recipe_of_decisions(self.decisions.get(row.recording, ()), self.name, self.signal)
+        if decided:
+            marks["decisions"] = decided
+        return self._epoch_parameters(segments, marks) if marks else self.epoch_parameters(segments)
+
+    def _epoch_parameters(
+        self, segments: tuple[tuple[str, float, float], ...], marks: Mapping[str, Any] | None = None
+    ) -> str:
+        recipe = _recipe(self.signal.epoch, exclude={"least"})
+        return canonical_json({**recipe, "segments": segments, **(marks or {})})
 
 
 @dataclass(frozen=True, slots=True)
@@ -314,6 +337,11 @@ class _Found:
     missing: str | None
     repair: Repair | None
     own_unit: bool
+
+
+def _least(signal: SignalDescription) -> dict[str, int]:
+    """Return the least number of epochs as the features know it: another one lays no epoch anew."""
+    return {} if signal.epoch.least is None else {"least": signal.epoch.least}
 
 
 def _exact(rate_hz: Fraction | float | None) -> Fraction:
