@@ -80,6 +80,10 @@ class Study:
         """Return ``results/quality``: one row a channel and measure."""
         return self._table("quality")
 
+    def epochs(self) -> pd.DataFrame:
+        """Return ``results/epochs``: how many epochs of each channel and segment are kept, and why not the others."""
+        return self._table("epochs")
+
     def exclusions(self) -> pd.DataFrame:
         """Return ``results/exclusions``: all that was left out, with its reason."""
         return self._table("exclusions")

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from bandcairn.execution.frames import epochs_to_frame, frame_to_signal
+from bandcairn.nodes.marks import DECIDED
 from bandcairn.steps.epoch import (
     Around,
     BadStretch,
@@ -81,7 +82,7 @@ def why_missing(channel: str, kept: int, parameters: Mapping[str, Any], epochs: 
         The epoch node.
     """
     if channel in epochs.facts.get("channels_by_decision", []):
-        return "left out by decision"
+        return DECIDED
     least = parameters.get("least", 0)
     if kept < least:
         return f"{kept} epochs kept, fewer than the least of {least}"
@@ -91,7 +92,7 @@ def why_missing(channel: str, kept: int, parameters: Mapping[str, Any], epochs: 
 def note_of_average(channel: str, epochs: Frame) -> str | None:
     """Return which channels the average reference of a channel holds although a decision leaves them out."""
     others = [name for name in epochs.facts.get("left_out_in_average", []) if name != channel]
-    return f"its average reference holds {', '.join(others)}, left out by decision" if others else None
+    return f"its average reference holds {', '.join(others)}, {DECIDED}" if others else None
 
 
 def _cut(

@@ -8,6 +8,15 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.errors import DamagedNodeError
+from bandcairn.execution.exclusions import (
+    EXCLUSIONS_SCHEMA,
+    Place,
+    decided_channels,
+    epochs_rows,
+    epochs_schema,
+    rejected_epochs,
+    with_words,
+)
 from bandcairn.execution.failure import Failure
 from bandcairn.nodes.plan import design_columns
 
@@ -20,16 +29,6 @@ if TYPE_CHECKING:
     from bandcairn.store.store import Store
 
 RUN_FILE = "run.json"
-_EXCLUSIONS_SCHEMA = {
-    "recording": "text",
-    "signal": "text",
-    "channel": "text",
-    "segment": "text",
-    "what": "text",
-    "count": "count",
-    "total": "count",
-    "reason": "text",
-}
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,10 +64,16 @@ class Outcome:
 def published(project: Project) -> bool:
     """Tell whether the results on disk are those of the plan, each file as it was written."""
     run = read_run(project.results_folder)
-    if run.get("plan") != project.plan.id:
+    if run.get("plan") != project.plan.id or run.get("words", "") != _words(project):
         return False
     files: Mapping[str, str] = run["files"]
     return all(_sha256(project.results_folder / name) == digest for name, digest in files.items())
+
+
+def _words(project: Project) -> str:
+    """Return a digest of the words that the results hold and no key does: who decided what, when and why."""
+    told = [f"{row.recording} {row.signal} {row.channel} {row.told}" for row in project.study.decisions]
+    return hashlib.sha256("\n".join(told).encode()).hexdigest()[:16] if told else ""
 
 
 def read_run(results: Path) -> dict[str, Any]:
@@ -123,6 +128,7 @@ def publish(
             for row in frames[node.key]
         ],
     )
+    counts = list(epochs_rows(features))
     verdicts = [row for node in study_nodes if node.step == "verdict" for row in frames[node.key]]
     statistics = [
         row | {"node": node.key}
@@ -131,10 +137,11 @@ def publish(
         for row in frames[node.key]
     ]
     tables = {
-        "features": (_features_schema(project), features),
+        "features": (_features_schema(project), with_words(project, features)),
         "statistics": (STATISTICS_COLUMNS | {"node": "text"}, _in_order_of_questions(project, statistics)),
         "quality": (VERDICT_COLUMNS | {"passed": "yes_no"}, [_with_truth(row) for row in verdicts]),
-        "exclusions": (_EXCLUSIONS_SCHEMA, list(_exclusions(project, features, verdicts, failures))),
+        "epochs": (epochs_schema(project), counts),
+        "exclusions": (EXCLUSIONS_SCHEMA, list(_exclusions(project, counts, verdicts, failures))),
         "ledger": (LEDGER_SCHEMA, _ledger(project, study_nodes, store, records)),
     }
     files = [
@@ -209,24 +216,20 @@ def _at_every_place(project: Project, failures: Sequence[Failure]) -> Iterator[F
 
 def _exclusions(
     project: Project,
-    features: Sequence[Mapping[str, Any]],
+    counts: Sequence[Mapping[str, Any]],
     verdicts: Sequence[Mapping[str, Any]],
     failures: Sequence[Failure],
 ) -> Iterator[dict[str, Any]]:
-    """Yield all that was left out: recordings that failed, channels beyond a limit, rejected epochs."""
+    """Yield all that was left out: recordings that failed, channels beyond a limit or by decision, epochs."""
     for failure in failures:
         what = "recording" if not failure.signal else "signal"
-        yield _left_out((failure.recording, failure.signal), what, (1, 1), failure.sentence)
+        yield Place(failure.recording, failure.signal).row(what, failure.sentence)
+    yield from decided_channels(project)
     for row in verdicts:
         if row["passed"] == "no":
-            channel = (row["recording"], row["signal"], row["channel"])
-            yield _left_out(channel, _what_failed(project, row), (1, 1), row["told"])
-    seen = set()
-    for row in features:
-        place = (row["recording"], row["signal"], row["channel"], row["segment"] or "")
-        if place not in seen:
-            seen.add(place)
-            yield from _rejected_epochs(project, row, place)
+            place = Place(row["recording"], row["signal"], row["channel"])
+            yield place.row(_what_failed(project, row), row["told"])
+    yield from rejected_epochs(project, counts)
 
 
 def _what_failed(project: Project, row: Mapping[str, Any]) -> str:
@@ -239,31 +242,6 @@ def _what_failed(project: Project, row: Mapping[str, Any]) -> str:
         return "features, kept"
     kept = (limits.on_failure if of == "channel" else limits.on_band_failure) == "flag"
     return f"{of}, kept" if kept else of
-
-
-def _rejected_epochs(
-    project: Project, row: Mapping[str, Any], place: tuple[str, str, str, str]
-) -> Iterator[dict[str, Any]]:
-    reject = project.study.description.signals[row["signal"]].epoch.reject
-    if reject is None:
-        return
-    rules = (
-        (
-            row["too_large"],
-            f"peak to peak above {reject.peak_to_peak_uv:g} uV" if reject.peak_to_peak_uv else "",
-        ),
-        (row["too_flat"], f"peak to peak below {reject.flat_uv:g} uV" if reject.flat_uv else ""),
-    )
-    for count, reason in rules:
-        if count:
-            yield _left_out(place, "epoch", (count, row["epochs_total"]), reason)
-
-
-def _left_out(place: tuple[str, ...], what: str, counted: tuple[int, int], reason: str) -> dict[str, Any]:
-    """Return one row: `place` is recording, signal, channel, segment, as far as it goes; `counted` is of how many."""
-    columns = ("recording", "signal", "channel", "segment")
-    where = dict(zip(columns, (name or None for name in place), strict=False))
-    return {**where, "what": what, "count": counted[0], "total": counted[1], "reason": reason}
 
 
 def _ledger(
@@ -300,6 +278,7 @@ def _write_run(project: Project, files: Sequence[Path], failures: Sequence[Failu
 
     run = {
         "plan": project.plan.id,
+        "words": _words(project),
         "finished": now().isoformat(timespec="seconds"),
         "nodes": len(project.plan.nodes),
         "computed": computed,

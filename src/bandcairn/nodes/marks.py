@@ -17,6 +17,10 @@ if TYPE_CHECKING:
     SignalDescription = EegSignal | EcgSignal | EmgSignal
 
 
+# Of a channel without value: the words of the decision are put in its place where they are printed.
+DECIDED = "left out by decision"
+
+
 def decisions_by_recording(study: LoadedStudy) -> dict[str, tuple[DecisionRow, ...]]:
     """Return the decisions of each recording, in the order of the table."""
     grouped: dict[str, tuple[DecisionRow, ...]] = {}
