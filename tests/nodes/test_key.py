@@ -171,7 +171,28 @@ def test_labels_and_the_order_of_parents_stay_out_of_the_key() -> None:
     assert first.parents == second.parents
 
 
-@pytest.mark.parametrize("step", [step.name for step in STEPS])
+@pytest.fixture
+def plan_with_reference(
+    load: Callable[..., LoadedStudy],
+    content: Callable[..., RawContent],
+    rows: tuple[RecordingRow, ...],
+    study_text: str,
+) -> Plan:
+    """Return the plan of the study with its EEG in pairs."""
+    channels = "channels: [Fz, Cz]"
+    text = study_text.replace(channels, f"{channels}\n    reference: {{pairs: {{b: [Fz, Cz], a: [Cz, Fz]}}}}")
+    return build_plan(load(text, rows), {row.recording: content(row.recording) for row in rows})
+
+
+def test_the_recipe_and_key_of_a_reference_stand_frozen(plan_with_reference: Plan) -> None:
+    """As below, for the step that not every study asks for; pairs keep their order."""
+    golden = json.loads(GOLDEN.read_text("utf-8"))["reference"]
+    node = next(node for node in plan_with_reference.nodes.values() if node.step == "reference")
+    assert recipe_json(node.step, VERSIONS[node.step], node.parameters, node.parents, node.raw) == golden["recipe"]
+    assert node.key == golden["key"]
+
+
+@pytest.mark.parametrize("step", [step.name for step in STEPS if step.name != "reference"])
 def test_the_recipe_and_key_of_every_step_stand_frozen(step: str, plan: Plan) -> None:
     """A change of the key format or of a step's parameters makes every store of every lab stale: never by accident.
 

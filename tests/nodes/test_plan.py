@@ -136,6 +136,46 @@ def test_an_edit_touches_its_own_step_and_what_is_below_it(
     assert touched(plan, edited(before, after)) == expected
 
 
+@pytest.mark.parametrize("reference", ["average", "[Cz]", "{pairs: {Fz-Cz: [Fz, Cz]}}"])
+def test_a_reference_is_a_step_before_the_filter(
+    plan: Plan, edited: Callable[[str, str], Plan], reference: str
+) -> None:
+    """Absent, it leaves no node; quality is measured as recorded, whatever the reference."""
+    after = edited("channels: [Fz, Cz]", f"channels: [Fz, Cz]\n    reference: {reference}")
+
+    assert touched(plan, after) == of("eeg", "reference", *BELOW_FILTER) | WATCH
+    node = after.nodes[after.slots["p1_day", "eeg", "reference"]]
+    assert node.parents == (("signal", after.slots["p1_day", "eeg", "resample"]),)
+    assert after.nodes[after.slots["p1_day", "eeg", "filter"]].parents == (("signal", node.key),)
+
+
+def test_questions_are_answered_for_the_channels_that_a_reference_leaves(
+    edited: Callable[[str, str], Plan],
+) -> None:
+    """Pairs take the place of the channels."""
+    after = edited("channels: [Fz, Cz]", "channels: [Fz, Cz]\n    reference: {pairs: {Fz-Cz: [Fz, Cz]}}")
+
+    asked = next(node for node in after.study_nodes.values() if "alpha by shift" in node.parameters)
+    question = next(q for q in json.loads(asked.parameters)["questions"] if q["name"] == "alpha by shift")
+    assert question["channel_names"] == ["Fz-Cz"]
+
+
+def test_a_notch_alone_knows_the_frequency_of_the_mains(
+    load: Load, study_text: str, rows: Rows, contents: Mapping[str, RawContent]
+) -> None:
+    """The key of any other filter is the same on either side of the ocean."""
+    notch = study_text.replace(
+        "    epoch: {length_s: 4", "      - {type: notch}\n    epoch: {length_s: 4"
+    )
+    first, second = (
+        build_plan(load(text, rows), contents) for text in (notch, notch.replace("mains_hz: 50", "mains_hz: 60"))
+    )
+
+    assert {place for place in touched(first, second) if place[1] == "filter"} == {("eeg", "filter")}
+    stages = json.loads(second.nodes[second.slots["p1_day", "eeg", "filter"]].parameters)["stages"]
+    assert [stage.get("mains_hz") for stage in stages] == [None, 60]
+
+
 def test_an_edit_undone_returns_to_the_keys_of_before(plan: Plan, edited: Callable[[str, str], Plan]) -> None:
     """A parameter changed back costs nothing."""
     assert edited("cutoff_hz: 400", "cutoff_hz: 400.0").id == plan.id
