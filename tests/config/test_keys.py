@@ -13,6 +13,7 @@ from pydantic import BaseModel
 from bandcairn.study import models, quality_blocks
 from bandcairn.study.blocks import Block
 from bandcairn.study.description import load_study
+from bandcairn.study.epoch_blocks import Epoch, Reject
 from bandcairn.study.filter_blocks import FilterStage
 from bandcairn.study.reference_blocks import BipolarPairs
 
@@ -39,8 +40,8 @@ SECTIONS: dict[str, type[BaseModel]] = {
     "resample": models.Resample,
     "reference, as pairs": BipolarPairs,
     "filter, each stage": FilterStage,
-    "epoch": models.Epoch,
-    "epoch.reject": models.Reject,
+    "epoch": Epoch,
+    "epoch.reject": Reject,
     "spectrum of eeg and emg": models._Spectrum,
     "spectrum of ecg": models.EcgSpectrum,
     "features of eeg": models.EegFeatures,
