@@ -74,6 +74,8 @@ def epochs_rows(features: Sequence[Mapping[str, Any]]) -> Iterator[dict[str, Any
 def rejected_epochs(project: Project, counts: Sequence[Mapping[str, Any]]) -> Iterator[dict[str, Any]]:
     """Yield a row for every recording, signal, channel, segment and reason that has dropped an epoch.
 
+    The epochs of a channel that is left out as a whole have no rows of their own: `decided_channels` tells of it.
+
     Parameters
     ----------
     project : Project
@@ -90,12 +92,30 @@ def rejected_epochs(project: Project, counts: Sequence[Mapping[str, Any]]) -> It
             for decision in decisions.get(row["recording"], ())
             if row["channel"] in touched_channels(decision, row["signal"], signal)
         ]
+        as_a_whole = any(not decision.is_stretch for decision in mine)
+        mine = [decision for decision in mine if _overlaps(project, decision, place.segment)]
         for count, reason in _reasons(signal.epoch, mine).items():
-            if row[count]:
+            if row[count] and not (count == "by_decision" and as_a_whole):
                 yield place.row("epoch", reason, row[count], row["total"])
         if row["no_window"]:
             reason = "the window about the event crosses a gap or a border"
             yield place.row("event", reason, row["no_window"], row["total"] + row["no_window"])
+
+
+def _overlaps(project: Project, decision: DecisionRow, segment: str) -> bool:
+    """Tell whether a decided stretch touches a segment; no segment is the whole recording."""
+    if not segment or decision.start_s is None or decision.stop_s is None:
+        return True
+    listed = [
+        (row.segment, row.start_s, row.stop_s)
+        for row in project.study.segments
+        if row.recording == decision.recording
+    ]
+    held = listed or project.survey.contents[decision.recording].annotated_segments
+    return any(
+        name == segment and decision.start_s < stop_s and start_s < decision.stop_s
+        for name, start_s, stop_s in held
+    )
 
 
 def decided_channels(project: Project) -> Iterator[dict[str, Any]]:
