@@ -202,8 +202,23 @@ def _table(header: Iterable[str], rows: Iterable[Iterable[str]]) -> str:
 
 
 def _marks(page: str, mark: str) -> tuple[Mark, ...]:
-    lines = enumerate(page.splitlines(), start=1)
-    return tuple(Mark(number, " ".join(line.split())) for number, line in lines if f"# {mark}" in line)
+    """Return the marked lines; a comment that stands above its key is told with the key."""
+    lines = page.splitlines()
+    marks = []
+    for number, line in enumerate(lines):
+        if f"# {mark}" not in line:
+            continue
+        place, text = number, line
+        if line.lstrip().startswith("#"):
+            indent = line[: len(line) - len(line.lstrip())]
+            place = next(n for n in range(number, len(lines)) if not lines[n].lstrip().startswith("#"))
+            if lines[place].strip() and lines[place].startswith(indent):
+                comment = " ".join(each.strip(" #") for each in lines[number:place])
+                text = f"{lines[place]} # {comment}"
+            else:
+                place = number
+        marks.append(Mark(place + 1, " ".join(text.split())))
+    return tuple(marks)
 
 
 def _no_recordings(folder: Path, left_out: Sequence[LeftOut]) -> StudyError:

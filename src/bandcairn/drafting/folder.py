@@ -20,6 +20,9 @@ if TYPE_CHECKING:
     from bandcairn.drafting.findings import FoundChannel
     from bandcairn.signal import FileFacts
 
+_BESIDE = frozenset(
+    {".eeg", ".vmrk", ".fdt"}
+)  # the samples and marks of a recording whose header is another file
 _NOT_RAW = frozenset({"nodes", "results"})  # what a study computes
 _OWN = frozenset({"recordings.csv", "recordings.tsv", "segments.csv", "segments.tsv"})
 
@@ -121,9 +124,8 @@ def _common_annotations(files: Sequence[FileFacts]) -> tuple[str, ...]:
 
 
 def _remarks(files: Sequence[str], known: Sequence[str]) -> Iterator[str]:
-    others = Counter(
-        PurePosixPath(file).suffix.lower() or "no suffix" for file in files if file not in set(known)
-    )
+    suffixes = (PurePosixPath(file).suffix.lower() or "no suffix" for file in sorted({*files} - {*known}))
+    others = Counter(suffix for suffix in suffixes if suffix not in _BESIDE)
     if others:
         counted = ", ".join(f"{count} {suffix}" for suffix, count in others.most_common(6))
         yield f"Files of other formats were not looked at: {counted}."

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import textwrap
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
@@ -71,7 +72,7 @@ def study_page(
     for proposal in proposals:
         if proposal.settings.problem:
             lines += [f"# {proposal.group.name} is not used: {proposal.settings.problem}."]
-            lines += [f"# {line}" for line in _signal(findings, recordings, proposal)]
+            lines += [f"# {line}" for line in "\n".join(_signal(findings, recordings, proposal)).split("\n")]
             lines += [""]
     unused = tuple(_unused(recordings, proposals))
     lines += [*unused, ""] if unused else []
@@ -140,6 +141,7 @@ def _signal(findings: Findings, recordings: Sequence[FoundRecording], proposal: 
         )
     elif findings.annotations or any(one.segments for one in recordings):
         yield _line("    # segments: []", "for the whole recording; absent: every segment of a recording")
+    yield from _recorder(settings)
     rates = " and ".join(f"{float(rate):g}" for rate in group.rates_hz) or "an unknown number of"
     if settings.resample_hz is None:
         yield f"    # no resample: {'all files have' if group.rates_hz else 'the files state'} {rates} Hz"
@@ -148,6 +150,15 @@ def _signal(findings: Findings, recordings: Sequence[FoundRecording], proposal: 
         yield _line(f"    resample: {{rate_hz: {settings.resample_hz}}}", f"the files have {rates} Hz; {why}")
     yield from _filter(findings, group, settings)
     yield from _SHAPE[group.kind](settings)
+
+
+def _recorder(settings: Settings) -> Iterator[str]:
+    low_hz, high_hz = settings.recorder_hz
+    stated = [f"highpass_hz: {low_hz:g}"] if low_hz > 0 else []
+    stated += [f"lowpass_hz: {high_hz:g}"] if math.isfinite(high_hz) else []
+    if stated and low_hz < high_hz:
+        told = "the narrowest low_cutoff and high_cutoff in *_channels.tsv"
+        yield _line(f"    recorder: {{{', '.join(stated)}}}", told)
 
 
 def _channels(group: Group) -> Iterator[str]:
@@ -189,8 +200,7 @@ def _filter(findings: Findings, group: Group, settings: Settings) -> Iterator[st
     stage = "design: butterworth, order: {order}, phase: zero}}"
     mains_hz = int(findings.mains.value or 50)
     if low_hz < mains_hz < high_hz:
-        notch = f"cutoff_hz: [{mains_hz - 2}, {mains_hz + 2}], {stage.format(order=2)}"
-        yield _line(f"      # - {{type: bandstop, {notch}", "against mains hum, if there is any")
+        yield _line("      # - {type: notch}", "against mains hum and its harmonics, if there is any")
     yield f"      - {{type: bandpass, cutoff_hz: [{low_hz:g}, {high_hz:g}], {stage.format(order=settings.order)}"
 
 

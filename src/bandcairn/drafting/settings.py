@@ -6,7 +6,7 @@ Values without a source are common practice.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
@@ -34,8 +34,8 @@ _USABLE_SHARE = 0.9
 # Rates to resample to, the first that fits; and up to which rate a file is left as it is.
 _TARGETS_HZ = {
     "eeg": (128, 125, 100),
-    "ecg": (500, 250, 256, 200, 128),
-    "emg": (2000, 1000, 1024, 500, 512, 250),
+    "ecg": (500, 256, 250, 200, 128),
+    "emg": (2000, 1024, 1000, 512, 500, 250),
 }
 _LEFT_ALONE_HZ = {"eeg": 160, "ecg": 512, "emg": 2048}
 _LARGEST_FACTOR = 1000  # numerator and denominator of a change of rate that the resampling step takes
@@ -71,6 +71,8 @@ class Settings:
     ----------
     whole : bool
         Whether the whole recording is used although there are segments.
+    recorder_hz : tuple of float
+        What the recorder passes, 0 and infinity where nothing states it.
     resample_hz : int or None
         None where the rate of the files is kept.
     filter_hz : tuple of float
@@ -86,6 +88,7 @@ class Settings:
     """
 
     whole: bool
+    recorder_hz: Band
     resample_hz: int | None
     filter_hz: Band
     order: int
@@ -112,25 +115,39 @@ def settings_for(group: Group, lengths: Lengths) -> Settings:
     rates_hz = group.rates_hz
     resample_hz = target_hz(group.kind, rates_hz)
     rate_hz = float(resample_hz or min(rates_hz, default=Fraction(10_000)))
-    low_hz, high_hz = _pass_hz(group, rate_hz)
+    recorder_hz = _recorder_hz(group)
+    low_hz, high_hz = _pass_hz(group.kind, rate_hz, recorder_hz)
     whole = group.kind == "ecg" and lengths.segment_s is not None and lengths.segment_s < _SHORT_FOR_BEATS_S
     available_s = lengths.segment_s if lengths.segment_s is not None and not whole else lengths.recording_s
     windows = _WINDOWS_S[group.kind]
     fitting = [window for window in windows if available_s is None or window[0] <= available_s + 1e-6]
     epoch_s, segment_s = fitting[0] if fitting else windows[-1]
-    bands_hz = _bands_hz(group.kind, low_hz, high_hz, epoch_s)
-    problem = ""
-    if len(group.lacking) > 0:
-        problem = f"not in {_some(group.lacking)}: delete those rows of recordings.csv to use it"
-    elif len(rates_hz) > 1 and resample_hz is None:
-        problem = "the recordings have rates that no common lower one fits: choose resample yourself"
-    elif low_hz * 2 > high_hz or (group.kind == "eeg" and not bands_hz):
-        problem = f"at {rate_hz:g} Hz no more than {low_hz:g} to {high_hz:g} Hz would pass"
-    elif not fitting:
-        problem = f"the shortest recording or segment, {available_s:g} s, is too short for it"
-    return Settings(
-        whole, resample_hz, (low_hz, high_hz), _ORDER[group.kind], epoch_s, segment_s, bands_hz, problem
+    drafted = Settings(
+        whole=whole,
+        recorder_hz=recorder_hz,
+        resample_hz=resample_hz,
+        filter_hz=(low_hz, high_hz),
+        order=_ORDER[group.kind],
+        epoch_s=epoch_s,
+        segment_s=segment_s,
+        bands_hz=_bands_hz(group.kind, low_hz, high_hz, epoch_s),
     )
+    too_short_s = None if fitting else available_s
+    return replace(drafted, problem=_problem(group, drafted, rate_hz, too_short_s))
+
+
+def _problem(group: Group, settings: Settings, rate_hz: float, too_short_s: float | None) -> str:
+    """Return why a signal cannot be used as it stands; empty where it can."""
+    low_hz, high_hz = settings.filter_hz
+    if group.lacking:
+        return f"not in {_some(group.lacking)}: delete those rows of recordings.csv to use it"
+    if len(group.rates_hz) > 1 and settings.resample_hz is None:
+        return "the recordings have rates that no common lower one fits: choose resample yourself"
+    if low_hz * 2 > high_hz or (group.kind == "eeg" and not settings.bands_hz):
+        return f"at {rate_hz:g} Hz no more than {low_hz:g} to {high_hz:g} Hz would pass"
+    if too_short_s is not None:
+        return f"the shortest recording or segment, {too_short_s:g} s, is too short for it"
+    return ""
 
 
 def target_hz(kind: str, rates_hz: Sequence[Fraction]) -> int | None:
@@ -150,14 +167,17 @@ def _is_simple(ratio: Fraction) -> bool:
     return max(ratio.numerator, ratio.denominator) <= _LARGEST_FACTOR
 
 
-def _pass_hz(group: Group, rate_hz: float) -> Band:
-    """Return the cut-offs: the usual ones, narrowed to half the rate and to what the recorder passed."""
-    low_hz, high_hz = _WANTED_HZ[group.kind]
+def _recorder_hz(group: Group) -> Band:
+    """Return what every channel's recorder passes, as far as the dataset states it."""
+    low_hz = max((one.low_hz for one in group.channels if one.low_hz), default=0.0)
+    return low_hz, min((one.high_hz for one in group.channels if one.high_hz), default=math.inf)
+
+
+def _pass_hz(kind: str, rate_hz: float, recorder_hz: Band) -> Band:
+    """Return the cut-offs: the usual ones, narrowed to half the rate and to what the recorder passes."""
+    low_hz, high_hz = _WANTED_HZ[kind]
     limit_hz = _USABLE_SHARE * rate_hz / 2
-    recorder_low = max((one.low_hz for one in group.channels if one.low_hz), default=0.0)
-    recorder_high = min((one.high_hz for one in group.channels if one.high_hz), default=math.inf)
-    high_hz = min(high_hz, math.floor(limit_hz) or limit_hz, recorder_high)
-    return max(low_hz, recorder_low), high_hz
+    return max(low_hz, recorder_hz[0]), min(high_hz, math.floor(limit_hz) or limit_hz, recorder_hz[1])
 
 
 def _bands_hz(kind: str, low_hz: float, high_hz: float, epoch_s: float) -> dict[str, Band]:

@@ -142,7 +142,7 @@ def _read_description(folder: Path) -> Document:
     try:
         text = (folder / STUDY_FILE).read_text(encoding="utf-8-sig")
     except OSError as error:
-        remedy = "Name the folder that holds study.yaml; `bandcairn demo` writes one to learn from."
+        remedy = "Name the folder that holds study.yaml; `bandcairn new` drafts one from a folder of recordings."
         found = error.strerror or "no such file"
         raise StudyError((Problem(STUDY_FILE, "", str(folder), found, "a study folder", remedy),)) from None
     except UnicodeDecodeError as error:
