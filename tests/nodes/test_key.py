@@ -16,9 +16,15 @@ from hypothesis import strategies as st
 from bandcairn.nodes.catalogue import STEPS, VERSIONS
 from bandcairn.nodes.key import canonical_json, key_of, recipe_json
 from bandcairn.nodes.node import make_node
+from bandcairn.nodes.plan import build_plan
 
 if TYPE_CHECKING:
+    from collections.abc import Callable
+
     from bandcairn.nodes.plan import Plan
+    from bandcairn.nodes.survey import RawContent
+    from bandcairn.study.description import LoadedStudy
+    from bandcairn.study.tables import RecordingRow
 
 GOLDEN = Path(__file__).with_name("golden_recipes.json")
 DIGEST = "0123456789abcdef" * 4
@@ -188,7 +194,10 @@ def test_the_recipe_and_key_of_a_reference_stand_frozen(plan_with_reference: Pla
     """As below, for the step that not every study asks for; pairs keep their order."""
     golden = json.loads(GOLDEN.read_text("utf-8"))["reference"]
     node = next(node for node in plan_with_reference.nodes.values() if node.step == "reference")
-    assert recipe_json(node.step, VERSIONS[node.step], node.parameters, node.parents, node.raw) == golden["recipe"]
+    assert (
+        recipe_json(node.step, VERSIONS[node.step], node.parameters, node.parents, node.raw)
+        == golden["recipe"]
+    )
     assert node.key == golden["key"]
 
 

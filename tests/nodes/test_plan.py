@@ -164,11 +164,10 @@ def test_a_notch_alone_knows_the_frequency_of_the_mains(
     load: Load, study_text: str, rows: Rows, contents: Mapping[str, RawContent]
 ) -> None:
     """The key of any other filter is the same on either side of the ocean."""
-    notch = study_text.replace(
-        "    epoch: {length_s: 4", "      - {type: notch}\n    epoch: {length_s: 4"
-    )
+    notch = study_text.replace("    epoch: {length_s: 4", "      - {type: notch}\n    epoch: {length_s: 4")
     first, second = (
-        build_plan(load(text, rows), contents) for text in (notch, notch.replace("mains_hz: 50", "mains_hz: 60"))
+        build_plan(load(text, rows), contents)
+        for text in (notch, notch.replace("mains_hz: 50", "mains_hz: 60"))
     )
 
     assert {place for place in touched(first, second) if place[1] == "filter"} == {("eeg", "filter")}
