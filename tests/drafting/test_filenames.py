@@ -62,3 +62,10 @@ def test_names_that_tell_no_person_stay_blank() -> None:
     guess = guess_design(_paths("rest_left.edf", "rest_right.edf", "task_left.edf", "task_right.edf"))
     assert set(guess.participants) == {""}
     assert guess.participants_choice.value is None
+
+
+def test_a_folder_for_each_person_is_no_group() -> None:
+    """A name that stands in folder and file is one name."""
+    guess = guess_design(_paths("p1/p1_day.edf", "p1/p1_night.edf", "p2/p2_day.edf", "p2/p2_night.edf"))
+    assert guess.participants == ("p1", "p1", "p2", "p2")
+    assert list(guess.columns) == ["condition"]

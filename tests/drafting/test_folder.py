@@ -190,3 +190,16 @@ def test_equal_names_in_two_folders_stay_apart(tmp_path: Path, put_edf: Callable
     ]
     assert [one.participant for one in draft.recordings] == ["p1", "p2", "p1", "p2"]
     assert draft.recordings[0].design == {"condition": "day"}
+
+
+def test_a_long_list_of_channels_is_broken_between_names(
+    tmp_path: Path, put_edf: Callable[..., None]
+) -> None:
+    """Names with blanks stay whole, and all of them are read back."""
+    labels = [f"EEG {site}-Ref" for site in ("Fp1", "Fp2", "F3", "F4", "C3", "C4", "P3", "P4", "O1", "O2")]
+    put_edf(tmp_path / "p1.edf", dict.fromkeys(labels, 128), hum_hz=50)
+    put_edf(tmp_path / "p2.edf", dict.fromkeys(labels, 250), hum_hz=50)
+    write_draft(tmp_path, draft_study(tmp_path))
+    assert list(load_study(tmp_path).description.signals["eeg"].channels) == labels
+    page = (tmp_path / "study.yaml").read_text("utf-8")
+    assert all(label in page for label in labels)

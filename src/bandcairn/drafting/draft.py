@@ -206,7 +206,8 @@ def _marks(page: str, mark: str) -> tuple[Mark, ...]:
     lines = page.splitlines()
     marks = []
     for number, line in enumerate(lines):
-        if f"# {mark}" not in line:
+        # Three blanks behind the mark of a comment: part of a signal that is commented out.
+        if f"# {mark}" not in line or line.startswith("#   "):
             continue
         place, text = number, line
         if line.lstrip().startswith("#"):

@@ -156,7 +156,9 @@ def _columns(names: _Names, participant_place: int) -> dict[str, int]:
     for place in names.places:
         column = names.column(place)
         counter = len(set(column)) == len(column) > 4  # another number in each file says nothing of a design
-        if place == participant_place or not names.varies(place) or counter:
+        same = len(set(zip(people, column, strict=True))) == len(set(people)) == len(set(column))
+        # What goes with the participant one to one is the participant once more, as in p1/p1_day.edf.
+        if same or not names.varies(place) or counter:
             continue
         if all(_DATE.fullmatch(token) for token in column):
             continue

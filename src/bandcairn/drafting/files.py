@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections import Counter
 from typing import TYPE_CHECKING
 
 from bandcairn.drafting.findings import FoundChannel, LeftOut
@@ -84,9 +85,9 @@ def unique_names(stems: Mapping[str, str]) -> dict[str, str]:
     dict of str to str
         By file.
     """
-    wanted = list(stems.values())
+    wanted = Counter(stems.values())
     return {
-        file: stem if wanted.count(stem) == 1 else re.sub(r"[/.\s]+", "_", file).strip("_")
+        file: stem if wanted[stem] == 1 else re.sub(r"[/.\s]+", "_", file).strip("_")
         for file, stem in stems.items()
     }
 

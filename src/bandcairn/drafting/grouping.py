@@ -90,7 +90,7 @@ def group_channels(recordings: Sequence[FoundRecording]) -> Grouping:
     """
     kept, left_out = _in_common(recordings)
     kinds = {each.label: each.kind for one in kept for each in reversed(one.channels) if each.kind}
-    holders = {label: [one for one in kept if _holds(one, label, kind)] for label, kind in kinds.items()}
+    holders = {label: {one.name for one in kept if _holds(one, label, kind)} for label, kind in kinds.items()}
     ordered = sorted(kinds, key=lambda label: _place(kept, label))
     whole = [label for label in ordered if len(holders[label]) == len(kept)]
     partly = [label for label in ordered if len(kept) > len(holders[label]) >= len(kept) / 2]
@@ -99,7 +99,9 @@ def group_channels(recordings: Sequence[FoundRecording]) -> Grouping:
     for kind in KINDS:
         labels = [label for label in partly if kinds[label] == kind]
         if labels and kind not in {group.kind for group in groups}:
-            lacking = tuple(one.name for one in kept if any(one not in holders[label] for label in labels))
+            lacking = tuple(
+                one.name for one in kept if any(one.name not in holders[label] for label in labels)
+            )
             having = [one for one in kept if one.name not in lacking]
             groups += _groups(labels, kinds, having, lacking) if having else []
         else:
@@ -131,7 +133,7 @@ def _in_common(recordings: Sequence[FoundRecording]) -> tuple[list[FoundRecordin
     )
     kept = [one for one in recordings if one.channel(shared) is not None]
     reason = f"no channel {shared}: a study's signals must be in every recording; draft these as a study of their own"
-    return kept, [LeftOut(one.file, reason) for one in recordings if one not in kept]
+    return kept, [LeftOut(one.file, reason) for one in recordings if one.channel(shared) is None]
 
 
 def _place(recordings: Sequence[FoundRecording], label: str) -> tuple[int, int]:
@@ -167,7 +169,7 @@ def _groups(
     return groups
 
 
-def _partly(label: str, kept: Sequence[FoundRecording], holders: Sequence[FoundRecording]) -> str:
-    lacking = [one.name for one in kept if one not in holders]
+def _partly(label: str, kept: Sequence[FoundRecording], holders: set[str]) -> str:
+    lacking = [one.name for one in kept if one.name not in holders]
     some = ", ".join(lacking[:3]) + (" ..." if len(lacking) > 3 else "")
     return f"{label} is left out: {len(lacking)} of {len(kept)} recordings lack it ({some})."

@@ -162,15 +162,15 @@ def _recorder(settings: Settings) -> Iterator[str]:
 
 
 def _channels(group: Group) -> Iterator[str]:
-    listed = textwrap.wrap(_flow(group.labels), _WIDTH - 14, break_long_words=False, break_on_hyphens=False)
+    listed = _listed(group.labels)
     first = group.members[0][0]
     told = _reasons(group)
     if len(listed) == 1:
         yield _line(f"    channels: {listed[0]}", told)
     else:
         yield f"    # {told}"
-        yield f"    channels: {listed[0]}"
-        yield from (f"      {part}" for part in listed[1:])
+        yield "    channels:"
+        yield from (f"      {part}" for part in listed)
     for label, members in zip(group.labels, group.members, strict=True):
         muscle = next((each.muscle for each in members if each.muscle), "")
         if muscle:
@@ -294,6 +294,21 @@ def _scalar(value: object) -> str:
 def _flow(names: Iterable[str]) -> str:
     text: str = yaml.safe_dump(list(names), default_flow_style=True, allow_unicode=True, width=10_000)
     return text.strip()
+
+
+def _listed(names: Sequence[str]) -> list[str]:
+    """Return a flow list over as many lines as it needs, broken between names only."""
+    items = [f"{_flow([name])[1:-1]}," for name in names]
+    items = [f"[{items[0]}", *items[1:]]
+    items[-1] = items[-1].removesuffix(",") + "]"
+    lines = [""]
+    for item in items:
+        joined = f"{lines[-1]} {item}".lstrip()
+        if len(joined) > _WIDTH - 14 and lines[-1]:
+            lines.append(item)
+        else:
+            lines[-1] = joined
+    return lines
 
 
 def _some(names: Sequence[str]) -> str:
