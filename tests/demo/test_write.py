@@ -182,3 +182,16 @@ def test_file_in_place_of_the_folder_is_refused(tmp_path: Path) -> None:
 
     with pytest.raises(StudyError, match="a file of this name"):
         write_demo(tmp_path / "watch")
+
+
+def test_an_interrupted_writing_leaves_nothing_behind(tmp_path: Path) -> None:
+    """Whoever interrupts the demo may start it again: the folder is empty, and no unfinished one stands beside."""
+
+    def interrupt(_done: int, _total: int) -> None:
+        raise KeyboardInterrupt
+
+    with pytest.raises(KeyboardInterrupt):
+        write_demo(tmp_path / "study", progress=interrupt)
+
+    assert [path.name for path in tmp_path.iterdir()] == ["study"]
+    assert list((tmp_path / "study").iterdir()) == []

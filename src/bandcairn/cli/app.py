@@ -5,12 +5,12 @@ from __future__ import annotations
 import os
 import signal
 import sys
-from typing import Protocol, runtime_checkable
+from typing import Annotated, Protocol, runtime_checkable
 
 import typer
 
 from bandcairn.cli import check, demo, new, plan, prune, run
-from bandcairn.cli.console import DONE, FAULT, INTERRUPTED, STUDY_AT_FAULT, print_error
+from bandcairn.cli.console import DONE, FAULT, INTERRUPTED, STUDY_AT_FAULT, print_error, say
 from bandcairn.errors import BandcairnError, DamagedNodeError, EngineError
 
 app = typer.Typer(
@@ -25,6 +25,27 @@ app = typer.Typer(
 )
 for module in (demo, new, check, plan, run, prune):
     module.register(app)
+
+
+def _print_version(asked: bool) -> None:  # noqa: FBT001 - the shape of a callback
+    if asked:
+        from importlib.metadata import version
+
+        say(f"bandcairn {version('bandcairn')}")
+        raise typer.Exit
+
+
+@app.callback()
+def _options(
+    *,
+    version: Annotated[  # noqa: ARG001 - its callback has done the work
+        bool,
+        typer.Option(
+            "--version", callback=_print_version, is_eager=True, help="Print the version and leave."
+        ),
+    ] = False,
+) -> None:
+    pass
 
 
 def run_app() -> None:

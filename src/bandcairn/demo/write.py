@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import csv
 import json
+import tempfile
 from dataclasses import asdict, dataclass
 from importlib.resources import files
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -16,7 +18,6 @@ from bandcairn.recordings.export import ExportChannel, write_delimited, write_ed
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterable, Sequence
-    from pathlib import Path
 
     from numpy.typing import NDArray
 
@@ -72,8 +73,17 @@ def write_demo(folder: Path, seed: int = 20, progress: Callable[[int, int], None
         If `folder` is a file or holds anything.
     """
     _refuse_occupied(folder)
+    folder.mkdir(parents=True, exist_ok=True)
+    # Written beside its place and moved there whole: who interrupts it finds the folder empty, and starts again.
+    with tempfile.TemporaryDirectory(prefix=".demo-", dir=folder.resolve().parent) as unfinished:
+        _write_study(Path(unfinished), seed, progress)
+        for part in Path(unfinished).iterdir():
+            part.rename(folder / part.name)
+
+
+def _write_study(folder: Path, seed: int, progress: Callable[[int, int], None] | None) -> None:
     visits = tuple(people.visits(seed))
-    (folder / "raw").mkdir(parents=True, exist_ok=True)
+    (folder / "raw").mkdir()
     (folder / "study.yaml").write_bytes(files("bandcairn.demo").joinpath("study.yaml").read_bytes())
     _write_recordings_table(folder / "recordings.csv", visits)
     _write_segments_table(folder / "segments.csv", visits)
