@@ -6,7 +6,9 @@ that library would bring slower channels to the highest rate, never come here.
 
 from __future__ import annotations
 
+import configparser
 import itertools
+import struct
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
@@ -28,6 +30,19 @@ CONVERTED_SUFFIXES = (".fif", ".vhdr")
 _VOLT = 107  # FIFF_UNIT_V
 _MICROVOLTS_PER_VOLT = 1e6
 _SKIP = "BAD_ACQ_SKIP"  # filler where a FIF file holds no samples
+# What the library's parts raise on files that are not what their suffix says.
+_FAULTS: tuple[type[Exception], ...] = (
+    ArithmeticError,
+    AssertionError,
+    AttributeError,
+    EOFError,
+    LookupError,
+    RuntimeError,
+    TypeError,
+    ValueError,
+    configparser.Error,
+    struct.error,
+)
 _JOINS = ("BAD boundary", "EDGE boundary")
 _BLOCK_VALUES = 1 << 21  # 16 MiB of doubles at once
 
@@ -187,7 +202,7 @@ def _opened(path: Path) -> Any:  # noqa: ANN401 - the library has no types
         return reader(path, preload=False, verbose="error")
     except OSError as error:
         raise unreadable(path, error) from error
-    except Exception as error:  # the library raises whatever its parts raise
+    except _FAULTS as error:
         told = str(error).splitlines()[0][:200] if str(error) else type(error).__name__
         remedy = "Restore the original file, or export it as EDF."
         raise refusal(path, f"a file that cannot be read ({told})", "a whole recording", remedy) from error
