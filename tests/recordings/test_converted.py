@@ -211,3 +211,28 @@ def test_a_file_that_cannot_be_read_is_refused(tmp_path: Path, name: str, conten
     path.write_bytes(content)
     with pytest.raises(RecordingError, match=rf"^{name}: found "):
         inspect(path)
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_any_damage_is_a_recording_error_or_nothing(
+    fif: Callable[..., Path], brainvision: Callable[..., Path], seed: int
+) -> None:
+    """A byte flipped or the end cut off, of either format: no error of the library comes out."""
+    rng = np.random.default_rng(seed)
+    vhdr = brainvision("Mk1=New Segment,,1,1,0,20250102030405000000\nMk2=Stimulus,S  1,251,1,0\n")
+    outcomes = set()
+    for path, damaged in ((fif(), "one.fif"), (vhdr, "one.vhdr"), (vhdr, "one.vmrk"), (vhdr, "one.eeg")):
+        target = path.with_name(damaged)
+        sound = target.read_bytes()
+        for index, place in enumerate(rng.integers(0, min(len(sound), 4000), 16).tolist()):
+            byte = bytes([int(rng.integers(0, 256))])
+            target.write_bytes(sound[:place] + (byte + sound[place + 1 :] if index % 2 else b""))
+            try:
+                inspect(path)
+                content_digests(path)
+                read(path, ("Fz",), NOTHING, None, None)
+                outcomes.add("read")
+            except RecordingError:
+                outcomes.add("refused")
+        target.write_bytes(sound)
+    assert outcomes == {"read", "refused"}

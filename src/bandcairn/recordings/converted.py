@@ -9,11 +9,12 @@ from __future__ import annotations
 import configparser
 import itertools
 import struct
+from contextlib import contextmanager
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
-from bandcairn.errors import UnknownUnitError
+from bandcairn.errors import RecordingError, UnknownUnitError
 from bandcairn.recordings.brainvision import read_brainvision
 from bandcairn.recordings.raw import RawSignal, counted_from_zero, cut
 from bandcairn.recordings.refusal import refusal, unreadable
@@ -42,6 +43,7 @@ _FAULTS: tuple[type[Exception], ...] = (
     ValueError,
     configparser.Error,
     struct.error,
+    Warning,  # where warnings are errors
 )
 _JOINS = ("BAD boundary", "EDGE boundary")
 _BLOCK_VALUES = 1 << 21  # 16 MiB of doubles at once
@@ -104,7 +106,9 @@ class Converted:
         step = max(1, _BLOCK_VALUES // max(1, len(self.raw.ch_names)))
         for piece in self.pieces:
             for first in range(piece.first, piece.stop, step):
-                yield self.raw[picks, first : min(first + step, piece.stop)][0]
+                with _faults_told(self.path):
+                    block = self.raw[picks, first : min(first + step, piece.stop)][0]
+                yield block
 
 
 def open_converted(path: Path) -> Converted:
@@ -115,8 +119,12 @@ def open_converted(path: Path) -> Converted:
     RecordingError
         If the library cannot read it, or if the length of a gap cannot be told.
     """
+    with _faults_told(path):
+        return _understood(path, _opened(path))
+
+
+def _understood(path: Path, raw: Any) -> Converted:  # noqa: ANN401
     header = read_brainvision(path) if path.suffix.lower() == ".vhdr" else None
-    raw = _opened(path)
     if len(raw.filenames) > 1:
         remedy = "Join the parts into one file."
         raise refusal(path, f"a file in {len(raw.filenames)} parts", "a single file", remedy)
@@ -198,14 +206,27 @@ def _opened(path: Path) -> Any:  # noqa: ANN401 - the library has no types
     import mne
 
     reader = mne.io.read_raw_brainvision if path.suffix.lower() == ".vhdr" else mne.io.read_raw_fif
+    return reader(path, preload=False, verbose="error")
+
+
+@contextmanager
+def _faults_told(path: Path) -> Iterator[None]:
+    """Turn what the library raises on a damaged file into a refusal."""
     try:
-        return reader(path, preload=False, verbose="error")
+        yield
+    except RecordingError:
+        raise
     except OSError as error:
         raise unreadable(path, error) from error
-    except _FAULTS as error:
-        told = str(error).splitlines()[0][:200] if str(error) else type(error).__name__
-        remedy = "Restore the original file, or export it as EDF."
-        raise refusal(path, f"a file that cannot be read ({told})", "a whole recording", remedy) from error
+    except Exception as error:
+        # On data of an unknown kind the library raises the bare class.
+        if type(error) is Exception or isinstance(error, _FAULTS):
+            told = str(error).splitlines()[0][:200] if str(error) else type(error).__name__
+            remedy = "Restore the original file, or export it as EDF."
+            raise refusal(
+                path, f"a file that cannot be read ({told})", "a whole recording", remedy
+            ) from error
+        raise
 
 
 def _kept(path: Path, raw: Any, rate_hz: Fraction) -> tuple[Piece, ...]:  # noqa: ANN401
