@@ -38,7 +38,7 @@ def _print_version(asked: bool) -> None:  # noqa: FBT001 - the shape of a callba
 @app.callback()
 def _options(
     *,
-    version: Annotated[  # noqa: ARG001 - its callback has done the work
+    version: Annotated[
         bool,
         typer.Option(
             "--version", callback=_print_version, is_eager=True, help="Print the version and leave."

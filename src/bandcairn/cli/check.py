@@ -30,7 +30,8 @@ def check(study: StudyFolder, *, as_json: AsJson = False) -> int:
         print_json({"study": loaded.description.model_dump(mode="json"), "unreadable": unreadable})
         return code
     people = {row.participant for row in loaded.recordings}
-    say(f"# {len(loaded.recordings)} recordings of {len(people)} participants; no problem found")
+    found = "no problem found" if not unreadable else f"{len(unreadable)} cannot be read, the rest is sound"
+    say(f"# {len(loaded.recordings)} recordings of {len(people)} participants; {found}")
     say("# every key that stands at its default is marked")
     for line in described(loaded.description):
         say(line)

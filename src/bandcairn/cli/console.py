@@ -15,10 +15,11 @@ import typer
 from bandcairn.errors import StudyError
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterator
+    from collections.abc import Callable, Iterator, Sequence
 
     from rich.progress import Progress
 
+    from bandcairn.errors import Problem
     from bandcairn.execution.project import Project
 
 # Exit codes. 1 is kept for "finished, but the answer is no".
@@ -63,14 +64,29 @@ def print_error(error: Exception | str, *, as_json: bool) -> None:
     if not problems:
         note(f"bandcairn: {error}")
         return
-    for problem in problems:
-        note(f"{problem.file}, {problem.where}" if problem.where else problem.file)
+    for places, problem in _alike(problems):
+        note(_listed(places))
         note(f"  {problem.field}")
         note(f"    found    {problem.found}")
         note(f"    allowed  {problem.allowed}")
         note(f"    remedy   {problem.remedy}")
     counted = "1 problem" if len(problems) == 1 else f"{len(problems)} problems"
     note(f"{counted}; nothing was run, nothing was written")
+
+
+def _alike(problems: Sequence[Problem]) -> list[tuple[list[str], Problem]]:
+    """Return the problems with all their places, those that differ in nothing else together."""
+    groups: dict[tuple[str, ...], tuple[list[str], Problem]] = {}
+    for problem in problems:
+        told = (problem.field, problem.found, problem.allowed, problem.remedy)
+        place = f"{problem.file}, {problem.where}" if problem.where else problem.file
+        groups.setdefault(told, ([], problem))[0].append(place)
+    return list(groups.values())
+
+
+def _listed(places: Sequence[str], most: int = 3) -> str:
+    more = len(places) - most
+    return "\n".join([*places[:most], *([f"and {more} more like these"] if more > 0 else [])])
 
 
 def opened(folder: Path, *, quiet: bool = False) -> Project:

@@ -88,6 +88,17 @@ def summary(project: Project, report: RunReport, code: int) -> dict[str, object]
     }
 
 
+def left_out(project: Project) -> str:
+    """Return one line on what the results leave out: how many recordings, channels and epochs."""
+    from bandcairn.store.tables import read_table
+
+    counts: dict[str, int] = {}
+    for row in read_table(project.results_folder / "exclusions.parquet"):
+        counts[row["what"]] = counts.get(row["what"], 0) + row["count"]
+    told = ", ".join(f"{count} {what}{'' if count == 1 else 's'}" for what, count in counts.items())
+    return f"left out: {told or 'nothing'} (results/exclusions.csv)"
+
+
 def tell(project: Project, report: RunReport, seconds: float) -> None:
     """Say what a run has done."""
     nodes = len(project.plan.nodes)
@@ -102,5 +113,7 @@ def tell(project: Project, report: RunReport, seconds: float) -> None:
         note(f"failed: {place}: {failure.sentence}")
     if failures:
         note(f"{report.outcome.failed_sentence}; the rest is done, with the true n in every row")
+    if report.rewritten:
+        say(left_out(project))
     say(f"results: {project.results_folder}")
     say("research use only: no result is a diagnosis")

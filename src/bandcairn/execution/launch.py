@@ -25,11 +25,6 @@ if TYPE_CHECKING:
 
 LOG_NAME = f"{STORE_NAME}/last_run.log"
 
-# One thread each: two cores are kept busy by two jobs, and spinning helper threads would only take from them.
-_ONE_THREAD = dict.fromkeys(
-    ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS", "VECLIB_MAXIMUM_THREADS"), "1"
-)
-
 # How long running jobs may take to finish when the run is interrupted.
 _PATIENCE_S = 5
 
@@ -173,7 +168,7 @@ def _follow_engine(
 ) -> tuple[int, int]:
     """Start the engine and follow it to its end; if interrupted, end it before anything else is done."""
     reading, writing = os.pipe()
-    environment = {**_ONE_THREAD, **os.environ, PIPE_VARIABLE: str(writing), RUN_VARIABLE: run}
+    environment = {**os.environ, PIPE_VARIABLE: str(writing), RUN_VARIABLE: run}
     computed = 0
     with subprocess.Popen(  # noqa: S603 - our own interpreter and Snakefile
         engine_command(study_folder.resolve(), cores),

@@ -34,6 +34,11 @@ RECEIPTS = f"{STORE_NAME}/.receipts"
 # Receipts of a run lie apart from those of another that may work on the same study at the same time. The name is
 # handed down to every process of the run.
 RUN_VARIABLE = "BANDCAIRN_RUN"
+# Products of matrices are computed by one thread: their last bits depend on how many take part, and would on the machine.
+# Two cores are kept busy by two jobs. To be set before numpy is loaded, which planning does not do.
+_ONE_THREAD = dict.fromkeys(
+    ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS", "VECLIB_MAXIMUM_THREADS"), "1"
+)
 # A run that was killed leaves its receipts; no run goes on for a week without a receipt.
 _STALE_S = 7 * 86400
 
@@ -134,6 +139,7 @@ class Wiring:
 
 def open_wiring() -> Wiring:
     """Open the study in the working directory, as the engine has set it."""
+    os.environ.update(_ONE_THREAD)
     os.environ.setdefault(RUN_VARIABLE, run_name())
     return Wiring(open_project(Path.cwd()))
 

@@ -54,7 +54,9 @@ def listed(names: Iterable[object]) -> str:
 
 
 def suggestion(name: str, known: Iterable[str], otherwise: str) -> str:
-    """Return a question that offers the closest known name, or `otherwise`."""
+    """Return a question that offers the closest known names, or `otherwise`; of names equally close, all."""
     choices = {choice.casefold(): choice for choice in known}
-    close = difflib.get_close_matches(name.casefold(), choices, n=1)
-    return f"Did you mean {choices[close[0]]}?" if close else otherwise
+    close = difflib.get_close_matches(name.casefold(), choices, n=5)
+    likeness = {choice: difflib.SequenceMatcher(a=choice, b=name.casefold()).ratio() for choice in close}
+    best = [choices[choice] for choice in close if likeness[choice] == max(likeness.values())]
+    return f"Did you mean {' or '.join(sorted(best))}?" if best else otherwise
