@@ -7,10 +7,12 @@ from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+import pandas as pd
 import pytest
 
 from bandcairn.execution.frames import frame_to_signal
 from bandcairn.execution.project import open_project
+from bandcairn.execution.publish import publish
 from bandcairn.execution.worker import Worker
 from bandcairn.recordings.export import ExportChannel, write_delimited, write_edf
 from bandcairn.store.store import Store
@@ -128,6 +130,21 @@ def test_p6_what_was_repaired_stands_beside_the_samples(study: Callable[..., Pat
     assert (repair["n_records_header"], repair["n_records_found"]) == (120, 119)
     assert repair["told"].startswith("the header says 120 data records, 119 found, ")
     assert "repairs" not in node("whole", "load").facts
+
+
+def test_p6_what_was_repaired_stands_in_the_exclusions(study: Callable[..., Path], tmp_path: Path) -> None:
+    """One row for the file, with the records that are missing and what was found."""
+    edf(tmp_path / "raw/whole.edf", "Cz", 1)
+    edf(tmp_path / "raw/short.edf", "Cz", 2, lost=9)
+    project = open_project(study("whole.edf", "short.edf"))
+    worker = Worker(project)
+    done = worker.work(project.plan.nodes.values())
+    records = {record["key"]: record for record in done.records}
+    publish(project, worker.plan_study_nodes(), worker.store, records, done.failures)
+    table = pd.read_parquet(project.results_folder / "exclusions.parquet")
+    (row,) = table[table["what"] == "data records"].to_dict("records")
+    assert (row["recording"], row["count"], row["total"]) == ("short", 1, 120)
+    assert row["reason"].startswith("repaired: the header says 120 data records, 119 found")
 
 
 def test_p6_a_file_that_lacks_too_much_is_left_out_and_the_others_go_on(

@@ -118,6 +118,16 @@ def _overlaps(project: Project, decision: DecisionRow, segment: str) -> bool:
     )
 
 
+def repaired_recordings(project: Project) -> Iterator[dict[str, Any]]:
+    """Yield one row a recording whose file does not fit its header: what was found, and how much is not used."""
+    for recording, content in project.survey.contents.items():
+        repair = content.facts.repair
+        if repair is not None:
+            claimed, found = repair.n_records_header, repair.n_records_found
+            missing = abs(claimed - found) if claimed > 0 else 0
+            yield Place(recording).row("data records", f"repaired: {repair}", missing, max(claimed, found))
+
+
 def decided_channels(project: Project) -> Iterator[dict[str, Any]]:
     """Yield a row for every channel, or whole signal, that a decision leaves out of a recording."""
     planned = {(recording, signal) for recording, signal, _ in project.plan.slots}

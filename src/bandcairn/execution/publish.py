@@ -15,6 +15,7 @@ from bandcairn.execution.exclusions import (
     epochs_rows,
     epochs_schema,
     rejected_epochs,
+    repaired_recordings,
     with_words,
 )
 from bandcairn.execution.failure import Failure
@@ -224,6 +225,7 @@ def _exclusions(
     for failure in failures:
         what = "recording" if not failure.signal else "signal"
         yield Place(failure.recording, failure.signal).row(what, failure.sentence)
+    yield from repaired_recordings(project)
     yield from decided_channels(project)
     for row in verdicts:
         if row["passed"] == "no":
