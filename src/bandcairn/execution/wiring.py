@@ -34,7 +34,7 @@ RECEIPTS = f"{STORE_NAME}/.receipts"
 # Receipts of a run lie apart from those of another that may work on the same study at the same time. The name is
 # handed down to every process of the run.
 RUN_VARIABLE = "BANDCAIRN_RUN"
-# Products of matrices are computed by one thread: their last bits depend on how many take part, and would on the machine.
+# Products of matrices are computed by one thread: their last bits depend on how many take part.
 # Two cores are kept busy by two jobs. To be set before numpy is loaded, which planning does not do.
 _ONE_THREAD = dict.fromkeys(
     ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS", "VECLIB_MAXIMUM_THREADS"), "1"
