@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import os
 import shutil
+import subprocess
 import sys
 import time
 from pathlib import Path
@@ -116,6 +117,16 @@ class TestAbandoned:
         for path in (own, node, young):
             path.touch()
             assert in_use(path)
+
+    def test_files_of_a_killed_process_that_no_one_has_noticed_are_not_in_use(self, tmp_path: Path) -> None:
+        """Where nothing collects ended processes, as in some containers, their numbers stay: they write no more."""
+        ended = subprocess.Popen([sys.executable, "-c", ""])
+        os.waitid(os.P_PID, ended.pid, os.WEXITED | os.WNOWAIT)
+        path = tmp_path / f".node.parquet.{ended.pid}-1.tmp"
+        path.touch()
+
+        assert not in_use(path)
+        ended.wait()
 
     def test_nodes_are_never_in_use_by_name(self, tmp_path: Path) -> None:
         """A whole node is no temporary file, however young."""

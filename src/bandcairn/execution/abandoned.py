@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import re
 import time
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 from bandcairn.execution.wiring import RECEIPTS
@@ -13,7 +14,6 @@ from bandcairn.provenance.hygiene import Leftover
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
-    from pathlib import Path
 
     from bandcairn.execution.project import Project
 
@@ -52,4 +52,14 @@ def _lives(process: int) -> bool:
         return False
     except PermissionError:
         return True
-    return True
+    return not _is_zombie(process)
+
+
+def _is_zombie(process: int) -> bool:
+    """Tell whether a process has ended and only waits to be noticed; never, where the system does not say."""
+    try:
+        status = Path(f"/proc/{process}/stat").read_text("ascii", "replace")
+    except OSError:
+        return False
+    # The state follows the name of the program, which stands in brackets and may hold anything.
+    return status.rpartition(")")[2].split()[0] in ("Z", "X")
