@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import time
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
@@ -9,7 +10,7 @@ import numpy as np
 import pytest
 
 from bandcairn.errors import RecordingError
-from bandcairn.recordings import Declared, RawSignal, content_digests, inspect, read
+from bandcairn.recordings import Declared, RawIndex, RawSignal, content_digests, inspect, read
 from bandcairn.signal import Annotation, Gap, Run
 
 if TYPE_CHECKING:
@@ -132,15 +133,12 @@ def test_p4_a_gap_behind_every_record_is_a_damaged_duration(build: Build, channe
 @pytest.mark.parametrize("offset", ["0.1", "0.000061", "0.123456789012345678"])
 def test_p5_the_start_between_two_seconds_is_kept_exactly(build: Build, channel: Make, offset: str) -> None:
     """As a decimal, not as the nearest binary number; samples still count from 0."""
-    record = str(1 + Fraction(offset).limit_denominator(10**18) * 1)
-    numerator, _, denominator = record.partition("/")
-    second = f"{int(numerator) * 10**18 // int(denominator):019d}"
-    text = f"+{second[:-18]}.{second[-18:]}"
+    second = f"+1.{offset.partition('.')[2]}".encode()
     path = build(
         [channel("Cz")],
         start="24.12.2523.59.58",
         reserved="EDF+C",
-        lists=lists((f"+{offset}".encode(), text.encode())),
+        lists=lists((f"+{offset}".encode(), second)),
     )
     details = inspect(path).details
     assert details.start_offset_s == Fraction(offset)
@@ -161,3 +159,31 @@ def test_runs_become_a_signal_whose_parts_can_be_told(gapped: Path) -> None:
     raw: RawSignal = read(gapped, ("Cz",), NOTHING, None, None)
     parts = [(run.start_s, samples.shape) for run, samples in raw.to_signal().each_run()]
     assert parts == [(Fraction(0), (1, 200)), (Fraction(102), (1, 200))]
+
+
+@pytest.mark.parametrize(("record_s", "refused"), [("1", False), ("1.001", True), ("0.999", True)])
+def test_b8_a_rate_that_the_time_stamps_contradict_is_refused(
+    build: Build, channel: Make, record_s: str, *, refused: bool
+) -> None:
+    """One part in a thousand is half a sample after five records, and seconds after an hour."""
+    starts = tuple(f"+{record}".encode() for record in range(60))
+    path = build([channel("Cz", np.arange(6000))], record_s=record_s, reserved="EDF+C", lists=lists(starts))
+    if refused:
+        with pytest.raises(
+            RecordingError, match=r"starting at \d+ s; allowed: [\d.]+ s, .*says it is continuous"
+        ):
+            inspect(path)
+    else:
+        assert inspect(path).channels[0].rate_hz == 100
+
+
+def test_what_is_remembered_of_a_file_is_all_that_it_says(gapped: Path, tmp_path: Path) -> None:
+    """Gaps, length, repair, texts and the exact offset come back from memory as they were found."""
+    gapped.write_bytes(gapped.read_bytes() + b"\0" * 5)
+    time.sleep(0.15)
+    memory = RawIndex.load(tmp_path / "index.json")
+    facts = inspect(gapped)
+    assert facts.repair is not None
+    assert memory.facts(gapped, tmp_path) == facts
+    memory.save()
+    assert RawIndex.load(tmp_path / "index.json").facts(gapped, tmp_path) == facts

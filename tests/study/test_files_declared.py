@@ -116,6 +116,13 @@ def test_p1_a_blank_or_unknown_unit_needs_a_unit_and_a_reason(
     assert check(study_folder, unclear, "", change) == ()
 
 
+def test_p7_a_rate_declared_for_tables_is_not_held_against_an_edf_file(study_folder: Path) -> None:
+    """A blank unit does not make a table of it."""
+    unclear = facts("Fz", "Cz", "ECG", "EMG", unit=None)
+    load = "load: {rate_hz: 500, unit: uV, unit_reason: the recorder writes none}\n"
+    assert check(study_folder, unclear, load) == ()
+
+
 def test_p1_a_reason_without_a_unit_is_refused(study_folder: Path) -> None:
     """It explains nothing."""
     with pytest.raises(StudyError, match="A unit_reason needs a unit"):

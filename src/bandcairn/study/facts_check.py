@@ -160,7 +160,8 @@ def _check_rates(case: _Case) -> Iterator[Problem]:
 def _check_declared_rate(case: _Case, channels: tuple[ChannelFacts, ...]) -> Iterator[Problem]:
     """Refuse a declared rate that a delimited file's clock contradicts; other formats need no declaration."""
     declared = case.load.rate_hz
-    delimited = [channel for channel in channels if channel.unit is None]
+    own_rates = case.facts.details.format in _OWN_UNITS
+    delimited = [channel for channel in channels if channel.unit is None and not own_rates]
     own = {float(channel.rate_hz) for channel in delimited if channel.rate_hz is not None}
     other = [rate for rate in sorted(own) if declared and not math.isclose(rate, declared, rel_tol=_SAME)]
     if declared is not None and other:
