@@ -30,7 +30,7 @@ _SLACK_S = 1e-6  # a stretch may end this much beyond the last sample: tables ar
 
 @dataclass(frozen=True, slots=True)
 class _Case:
-    """One signal in one recording."""
+    """One signal in one recording; `meant` holds what the file has for each of its channels: one if all is well."""
 
     study: LoadedStudy
     row: RecordingRow
@@ -39,19 +39,11 @@ class _Case:
     load: Load
     facts: FileFacts
     segments: tuple[SegmentRow, ...]
+    meant: tuple[tuple[ChannelFacts, ...], ...]
 
     def channels(self) -> tuple[ChannelFacts, ...]:
         """Return the channels of the signal that the file holds, in the order of the signal."""
-        first: dict[str, ChannelFacts] = {}
-        for channel in self.facts.channels:
-            first.setdefault(channel.label, channel)
-        found = (self.labels_for(name) for name in self.signal.channels)
-        return tuple(first[labels[0]] for labels in found if labels)
-
-    def labels_for(self, name: str) -> tuple[str, ...]:
-        """Return the labels of the file that mean a channel."""
-        labels = tuple(channel.label for channel in self.facts.channels)
-        return labels_for(name, labels, self.study.description.aliases or {})
+        return tuple(meant[0] for meant in self.meant if meant)
 
     def rate_hz(self, channel: ChannelFacts) -> float | None:
         """Return the rate of a channel: the file's own, else the declared one."""
@@ -86,17 +78,46 @@ def check_facts(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> tuple[Pro
     rows = [row for row in study.recordings if row.recording in facts]
     for row in rows:
         problems += _check_stretch(study, row, facts[row.recording], segments.get(row.recording, ()))
-    for name, signal in study.description.signals.items():
-        load = study.description.load_of(signal)
-        cases = [
-            _Case(study, row, name, signal, load, facts[row.recording], segments.get(row.recording, ()))
-            for row in rows
-        ]
+    for name in study.description.signals:
+        cases = list(_cases(study, rows, facts, segments, name))
         problems += [problem for case in cases for problem in _check_case(case)]
         problems += _check_common_rate(cases)
     problems += _check_annotations(study, facts)
     problems += _check_events(study, facts)
     return tuple(dict.fromkeys(problems))
+
+
+def _cases(
+    study: LoadedStudy,
+    rows: list[RecordingRow],
+    facts: Mapping[str, FileFacts],
+    segments: Mapping[str, tuple[SegmentRow, ...]],
+    name: str,
+) -> Iterator[_Case]:
+    """Yield a signal in every recording. Files built alike share one tuple of channels, which is searched once."""
+    signal = study.description.signals[name]
+    load = study.description.load_of(signal)
+    aliases = study.description.aliases or {}
+    known: dict[int, tuple[tuple[ChannelFacts, ...], ...]] = {}
+    for row in rows:
+        file = facts[row.recording]
+        if id(file.channels) not in known:
+            known[id(file.channels)] = _meant(signal.channels, file.channels, aliases)
+        meant = known[id(file.channels)]
+        yield _Case(study, row, name, signal, load, file, segments.get(row.recording, ()), meant)
+
+
+def _meant(
+    names: tuple[str, ...], channels: tuple[ChannelFacts, ...], aliases: Mapping[str, tuple[str, ...]]
+) -> tuple[tuple[ChannelFacts, ...], ...]:
+    """Return the channels of a file that mean each of the names."""
+    by_label: dict[str, tuple[ChannelFacts, ...]] = {}
+    for channel in channels:
+        by_label[channel.label] = (*by_label.get(channel.label, ()), channel)
+    return tuple(
+        tuple(channel for label in labels_for(name, tuple(by_label), aliases) for channel in by_label[label])
+        for name in names
+    )
 
 
 def _by_recording(segments: tuple[SegmentRow, ...]) -> dict[str, tuple[SegmentRow, ...]]:
@@ -117,8 +138,8 @@ def _check_case(case: _Case) -> Iterator[Problem]:
 
 def _check_channels(case: _Case) -> Iterator[Problem]:
     labels = [channel.label for channel in case.facts.channels]
-    for index, wanted in enumerate(case.signal.channels):
-        found = case.labels_for(wanted)
+    for index, (wanted, meant) in enumerate(zip(case.signal.channels, case.meant, strict=True)):
+        found = tuple(channel.label for channel in meant)
         if not found and wanted in case.facts.details.left_out:
             told = {
                 "found": f"{wanted}, which holds annotations or triggers",
