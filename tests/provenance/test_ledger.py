@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import pytest
 
+from bandcairn.nodes.catalogue import VERSIONS
 from bandcairn.nodes.key import key_of, recipe_json
 from bandcairn.nodes.node import Node, make_node
 from bandcairn.provenance.ledger import LEDGER_SCHEMA, ledger_rows, raw_of, read_ledger, records_of
@@ -26,7 +27,7 @@ def record_of(node: Node) -> dict[str, Any]:
     return {
         "key": node.key,
         "data_digest": f"digest of {node.step}",
-        "step_version": 1,
+        "step_version": VERSIONS[node.step],
         "software": {"python": "3.11.1", "numpy": "2.0.0"},
         "started": "2001-02-03T04:05:06.789+00:00",
         "seconds": 0.25,
@@ -52,7 +53,7 @@ def test_a_row_has_the_columns_of_the_contract(rows: list[dict[str, Any]]) -> No
         "parents": f'{{"features/p1":"{LOAD.key}"}}',
         "parameters": '{"rows":[]}',
         "data_digest": "digest of table",
-        "step_version": 1,
+        "step_version": VERSIONS["table"],
         "software": '{"numpy":"2.0.0","python":"3.11.1"}',
         "started": "2001-02-03T04:05:06.789+00:00",
         "seconds": 0.25,
