@@ -245,7 +245,8 @@ def _cut(signal: Signal, layout: Layout, reject: Reject | None, left_out: LeftOu
         rows = slice(filled, filled + row.count)
         peak_to_peak_uv[:, rows] = _ranges(here, layout.length, layout.step)
         if step_uv is not None:
-            step_uv[:, rows] = _steepest(here, layout.length, layout.step)
+            for steepest, channel in zip(step_uv[:, rows], here, strict=True):  # one by one: it takes a copy
+                steepest[:] = _steepest(channel[np.newaxis], layout.length, layout.step)[0]
         filled += row.count
     given = _left_out(signal, first, layout.length, left_out)
     unasked = np.isin(signal.channels, left_out.channels)
