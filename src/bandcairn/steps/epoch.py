@@ -245,8 +245,12 @@ def _cut(signal: Signal, layout: Layout, reject: Reject | None, left_out: LeftOu
         rows = slice(filled, filled + row.count)
         peak_to_peak_uv[:, rows] = _ranges(here, layout.length, layout.step)
         if step_uv is not None:
-            for steepest, channel in zip(step_uv[:, rows], here, strict=True):  # one by one: it takes a copy
-                steepest[:] = _steepest(channel[np.newaxis], layout.length, layout.step)[0]
+            together = (
+                len(here) if row.count == 1 else 1
+            )  # it takes a copy: of a long row, channel by channel
+            for channel in range(0, len(here), together):
+                some = slice(channel, channel + together)
+                step_uv[some, rows] = _steepest(here[some], layout.length, layout.step)
         filled += row.count
     given = _left_out(signal, first, layout.length, left_out)
     unasked = np.isin(signal.channels, left_out.channels)
