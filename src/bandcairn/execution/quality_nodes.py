@@ -6,7 +6,6 @@ and the verdict judges them, so that a limit or a band may change without measur
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any, Literal
@@ -16,7 +15,7 @@ import numpy as np
 from bandcairn.execution.frames import frame_to_signal
 from bandcairn.execution.group_nodes import rows_to_frame
 from bandcairn.steps.quality import assess
-from bandcairn.steps.quantisation import margin_db, noise_density
+from bandcairn.steps.quantisation import margin_db, noise_density, rmssd_floor_ms
 from bandcairn.steps.recorder import loss_db, read_prefilter, share_beyond, strictest
 from bandcairn.steps.spectrum import Spectrum
 from bandcairn.store.frame import Frame
@@ -139,7 +138,7 @@ def _measures(quality: Quality, index: int) -> dict[str, float | None]:
         "identical_channels": len(channel.identical),
         "mains_db": None if line is None else line.level_db,
         "mains_rms_uv": None if lines is None or line is None else lines.rms_uv,
-        "mains_frequency_hz": line.frequency_hz if line is not None and line.clear else None,
+        "mains_frequency_hz": channel.mains_frequency_hz,
     }
 
 
@@ -298,8 +297,7 @@ def _all_measured(frame: Frame, channel: str, parameters: Mapping[str, Any]) -> 
             yield from _margins(band_of, held, spectrum, rate_hz)
             yield from _beyond_recorder(band_of, edges)
     if parameters["kind"] == "ecg":
-        # Each of three times is rounded with a variance of 1/(12 fs^2), the middle one counts twice: 1/(2 fs^2).
-        floor_ms = 1000 / (used_hz * math.sqrt(2))
+        floor_ms = rmssd_floor_ms(used_hz)
         detail = f"times of peaks on its grid alone add {floor_ms:.3g} ms to rmssd, in quadrature"
         yield _Measured("beats_rate_hz", used_hz, about="intervals", detail=detail)
         yield _Measured("rmssd_floor_ms", floor_ms, about="intervals")

@@ -9,8 +9,10 @@ from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
+from bandcairn.steps.spectrum import window
+
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from numpy.typing import NDArray
 
@@ -38,7 +40,7 @@ class Line:
     Attributes
     ----------
     frequency_hz : float
-        Its centre, refined between the bins.
+        By its three highest bins; `true_frequency_hz` tells more.
     power_uv2 : float
         Its power above the floor; a sine of amplitude A has A^2/2.
     level_db : float
@@ -131,8 +133,7 @@ def find_line(spectrum: Spectrum, nominal_hz: float, n_averaged: int) -> Line | 
     """Measure the highest bin near a frequency against its neighbours.
 
     The floor is the median of the neighbours up to 6 Hz away, corrected for the median of an average of
-    exponential variables lying below its mean (Wilson-Hilferty). The frequency lies where a Hann window gives two
-    neighbouring bins the ratio that is found.
+    exponential variables lying below its mean (Wilson-Hilferty).
 
     Parameters
     ----------
@@ -151,8 +152,6 @@ def find_line(spectrum: Spectrum, nominal_hz: float, n_averaged: int) -> Line | 
     References
     ----------
     Wilson EB, Hilferty MM (1931) The distribution of chi-square. Proc Natl Acad Sci 17:684-688 (from memory).
-    Grandke T (1983) Interpolation algorithms for discrete Fourier transforms of weighted signals. IEEE Trans
-    Instrum Meas 32:350-355 (from memory).
     """
     step_hz = float(spectrum.frequencies_hz[1])
     half, around = round(_LINE_HALF_HZ / step_hz), round(_NEIGHBOURS_HZ / step_hz)
@@ -167,25 +166,67 @@ def find_line(spectrum: Spectrum, nominal_hz: float, n_averaged: int) -> Line | 
     if floor <= 0:
         return None
     near = density[peak - half : peak + half + 1]
+    power = max(0.0, float(np.sum(near - floor)))
     peak_db = 10 * math.log10(density[peak] / floor) if density[peak] > 0 else -math.inf
     alone = density[peak] > neighbours[-1] * 10 ** (_ALONE_DB / 10)
+    clear = bool(alone and peak_db >= max(_CLEAR_DB, _chance_db(n_averaged, deviations=5)))
     return Line(
         frequency_hz=(peak + _offset(density[peak - 1 : peak + 2], floor)) * step_hz,
-        power_uv2=max(0.0, float(np.sum(near - floor)) * step_hz),
+        power_uv2=power * step_hz,
         level_db=10 * math.log10(max(float(np.mean(near)), np.finfo(float).tiny) / floor),
         peak_db=peak_db,
-        clear=bool(alone and peak_db >= max(_CLEAR_DB, _chance_db(n_averaged, deviations=5))),
+        clear=clear,
     )
 
 
 def _offset(density: NDArray[np.float64], floor: float) -> float:
     """Return by what part of a bin a line lies beside the middle one of three bins of a Hann window."""
-    before, middle, after = np.sqrt(np.maximum(density - floor, 0))
-    if middle == 0:
-        return 0.0
-    ratio = float(max(before, after) / middle)
-    offset = max(0.0, (2 * ratio - 1) / (ratio + 1))
-    return offset if after >= before else -offset
+    before, middle, after = np.sqrt(np.maximum(density - floor, 0)).tolist()
+    # Of a line at offset d the bins are as 1/((1+d)(2+d)), 1/((1-d)(1+d)) and 1/((1-d)(2-d)).
+    offset: float = 2 * (after - before) / (before + 2 * middle + after) if middle > 0 else 0.0
+    return offset
+
+
+def true_frequency_hz(
+    samples: NDArray[np.float64], starts: Sequence[int], length: int, rate_hz: float, near_hz: float
+) -> float:
+    """Return the frequency of a line by the phase that it gains from one segment to the next.
+
+    Parameters
+    ----------
+    samples : ndarray, shape (n_samples,)
+        One channel in microvolt.
+    starts : sequence of int
+        First samples of pairs of segments that follow one another without a gap.
+    length : int
+        Samples of a segment.
+    rate_hz : float
+        Sampling rate.
+    near_hz : float
+        A frequency that is off by less than half of one over a segment's length.
+
+    Returns
+    -------
+    float
+        Hertz; `near_hz` where there is no pair.
+
+    References
+    ----------
+    Kay SM (1989) A fast and accurate single frequency estimator. IEEE Trans Acoust Speech Signal Process 37:1987-1990
+    (from memory): the angle of a mean of products of neighbours.
+    """
+    if not starts:
+        return near_hz
+    carrier = window("hann", length) * np.exp(-2j * np.pi * near_hz / rate_hz * np.arange(length))
+    parts = np.stack([carrier.real, carrier.imag], axis=1)
+    before, after = (
+        np.stack([samples[start + shift : start + shift + length] for start in starts]) @ parts
+        for shift in (0, length)
+    )
+    product = np.sum((after[:, 0] + 1j * after[:, 1]) * (before[:, 0] - 1j * before[:, 1]))
+    segment_s = length / rate_hz
+    gained = (float(np.angle(product)) / (2 * np.pi) - near_hz * segment_s + 0.5) % 1 - 0.5
+    return near_hz + gained / segment_s
 
 
 def _chance_db(n_averaged: int, deviations: float) -> float:

@@ -14,7 +14,7 @@ import numpy as np
 from bandcairn.errors import StepError
 from bandcairn.steps.amplitude import amplitude
 from bandcairn.steps.clipping import Stretches, clipped, find_rests, flat
-from bandcairn.steps.mains import mains, other_line
+from bandcairn.steps.mains import mains, other_line, true_frequency_hz
 from bandcairn.steps.spectrum import Spectrum, power_density
 
 if TYPE_CHECKING:
@@ -25,7 +25,7 @@ if TYPE_CHECKING:
     from bandcairn.signal import Run, Signal
     from bandcairn.steps.amplitude import Amplitude
     from bandcairn.steps.clipping import Rests
-    from bandcairn.steps.mains import Mains, MainsHz
+    from bandcairn.steps.mains import Line, Mains, MainsHz
 
 SEGMENT_S = 2
 # Segments of a longer recording are spread evenly over it: two minutes tell line and floor as well as a day.
@@ -71,6 +71,8 @@ class ChannelQuality:
         Smallest difference of two neighbouring samples that differ; None where none do.
     mains : Mains or None
         Lines of the declared mains frequency; None where no run holds a segment of two seconds, or nothing moves.
+    mains_frequency_hz : float or None
+        Its true frequency; None where the line is not clear.
     identical : tuple of int
         Indices of the other channels that hold the same samples; a channel that never changes has none.
     """
@@ -87,6 +89,7 @@ class ChannelQuality:
     typical_rms_uv: float | None
     smallest_step_uv: float | None
     mains: Mains | None
+    mains_frequency_hz: float | None
     identical: tuple[int, ...]
 
 
@@ -144,17 +147,23 @@ def assess(
     rate_hz = float(signal.rate_hz)
     starts = [run.first for run in signal.runs]
     rests = [find_rests(channel, starts) for channel in signal.samples]
-    spectrum, n_averaged = _recorded_spectrum(signal)
+    segments = _segments(signal)
+    spectrum = _recorded_spectrum(signal, segments) if segments.used else None
     moving = {
         index: Spectrum(spectrum.frequencies_hz, spectrum.density[index])
         for index, rest in enumerate(rests)
         if spectrum is not None and rest.smallest_step_uv is not None
     }
-    lines = {index: mains(one, mains_hz, n_averaged) for index, one in moving.items()}
+    lines = {index: mains(one, mains_hz, len(segments.used)) for index, one in moving.items()}
     if not accept_other_mains:
         other_hz: MainsHz = 60 if mains_hz == 50 else 50
-        others = {index: mains(one, other_hz, n_averaged) for index, one in moving.items()}
-        _refuse_other_mains(signal.channels, mains_hz, lines, others)
+        others = {index: mains(one, other_hz, len(segments.used)) for index, one in moving.items()}
+        _refuse_other_mains(signal, segments, mains_hz, lines, others)
+    frequencies_hz = {
+        index: _true_frequency_hz(signal, segments, index, found.fundamental)
+        for index, found in lines.items()
+        if found.fundamental is not None and found.fundamental.clear
+    }
     identical = _identical(signal.samples, rests)
     channels = tuple(
         _channel_quality(
@@ -163,6 +172,7 @@ def assess(
             rate_hz,
             range_uv=range_uv,
             lines=lines.get(index),
+            mains_frequency_hz=frequencies_hz.get(index),
             identical=identical[index],
             n_samples=signal.samples.shape[1],
         )
@@ -178,6 +188,7 @@ def _channel_quality(
     *,
     range_uv: tuple[float, float] | None,
     lines: Mains | None,
+    mains_frequency_hz: float | None,
     identical: tuple[int, ...],
     n_samples: int,
 ) -> ChannelQuality:
@@ -195,28 +206,52 @@ def _channel_quality(
         typical_rms_uv=size.typical_rms_uv,
         smallest_step_uv=rests.smallest_step_uv,
         mains=lines,
+        mains_frequency_hz=mains_frequency_hz,
         identical=identical,
     )
 
 
-def _recorded_spectrum(signal: Signal) -> tuple[Spectrum | None, int]:
-    """Return the mean density of segments that have no sample in common, and their number."""
-    rate_hz = float(signal.rate_hz)
-    length = round(SEGMENT_S * rate_hz)
-    starts = [
-        run.first + index * length
-        for run in signal.runs
-        for index in range(run.n_samples // length if length > 1 else 0)
-    ]
-    if not starts:
-        return None, 0
+@dataclass(frozen=True, slots=True)
+class _Segments:
+    """Segments of two seconds, evenly spread over the runs and without a sample in common.
+
+    Attributes
+    ----------
+    length : int
+        Samples of each.
+    used : list of int
+        First sample of each; empty where no run is that long.
+    paired : list of int
+        First samples of those that another follows in the same run.
+    """
+
+    length: int
+    used: list[int]
+    paired: list[int]
+
+
+def _segments(signal: Signal) -> _Segments:
+    length = round(SEGMENT_S * signal.rate_hz)
+    counts = [run.n_samples // length if length > 1 else 0 for run in signal.runs]
+    every = list(zip(signal.runs, counts, strict=True))
+    starts = [run.first + index * length for run, count in every for index in range(count)]
+    paired = [run.first + index * length for run, count in every for index in range(count - 1)]
+    return _Segments(length, _spread(starts), _spread(paired))
+
+
+def _spread(starts: list[int]) -> list[int]:
+    """Return `MOST_SEGMENTS` or fewer, from the first to the last."""
     n_used = min(len(starts), MOST_SEGMENTS)
-    used = [starts[index * (len(starts) - 1) // max(1, n_used - 1)] for index in range(n_used)]
+    return [starts[index * (len(starts) - 1) // max(1, n_used - 1)] for index in range(n_used)]
+
+
+def _recorded_spectrum(signal: Signal, segments: _Segments) -> Spectrum:
+    """Return the mean density of the segments, shape (n_channels, n_freq)."""
     # Channel by channel: the segments of one fit into a core's cache.
     spectra = [
         power_density(
-            np.concatenate([channel[start : start + length] for start in used]),
-            rate_hz,
+            np.concatenate([channel[start : start + segments.length] for start in segments.used]),
+            float(signal.rate_hz),
             method="welch",
             window="hann",
             segment_s=SEGMENT_S,
@@ -224,21 +259,31 @@ def _recorded_spectrum(signal: Signal) -> tuple[Spectrum | None, int]:
         )
         for channel in signal.samples
     ]
-    return Spectrum(spectra[0].frequencies_hz, np.stack([one.density for one in spectra])), n_used
+    return Spectrum(spectra[0].frequencies_hz, np.stack([one.density for one in spectra]))
+
+
+def _true_frequency_hz(signal: Signal, segments: _Segments, index: int, line: Line) -> float:
+    return true_frequency_hz(
+        signal.samples[index], segments.paired, segments.length, float(signal.rate_hz), line.frequency_hz
+    )
 
 
 def _refuse_other_mains(
-    channels: tuple[str, ...], mains_hz: MainsHz, declared: Mapping[int, Mains], other: Mapping[int, Mains]
+    signal: Signal,
+    segments: _Segments,
+    mains_hz: MainsHz,
+    declared: Mapping[int, Mains],
+    other: Mapping[int, Mains],
 ) -> None:
     found = other_line(declared, other)
     if found is None:
         return
     index, line = found
     raise StepError(
-        f"found a line at {line.frequency_hz:.2f} Hz in {channels[index]}, {line.peak_db:.0f} dB above its "
-        f"neighbours, and none of {mains_hz} Hz or its harmonics in any channel; allowed: mains_hz as recorded, which "
-        f"study.yaml declares as {mains_hz}. Correct mains_hz, leave the recording out, or state in "
-        "quality.accept_other_mains why the line is accepted."
+        f"found a line at {_true_frequency_hz(signal, segments, index, line):.2f} Hz in {signal.channels[index]}, "
+        f"{line.peak_db:.0f} dB above its neighbours, and none of {mains_hz} Hz or its harmonics in any channel; "
+        f"allowed: mains_hz as recorded, which study.yaml declares as {mains_hz}. Correct mains_hz, leave the "
+        "recording out, or state in quality.accept_other_mains why the line is accepted."
     )
 
 

@@ -1,4 +1,4 @@
-"""The steps in which a recorder counts, and the noise that they leave in the spectrum."""
+"""The steps of voltage and time in which a recorder counts, and the noise that they leave."""
 
 from __future__ import annotations
 
@@ -61,3 +61,21 @@ def margin_db(
     if power <= 0:
         return None
     return 10 * math.log10(power / (high_hz - low_hz) / noise_density(step_uv, rate_hz))
+
+
+def rmssd_floor_ms(rate_hz: float) -> float:
+    """Return what the grid of sampling times alone adds to RMSSD, in quadrature, in ms.
+
+    A time that is rounded to the grid errs with a variance of 1/(12 rate^2). A difference of two successive intervals
+    holds three times, the middle one twice: 1/(2 rate^2). Where peaks are placed between samples less remains.
+
+    Parameters
+    ----------
+    rate_hz : float
+        Sampling rate at which beats are found.
+
+    Returns
+    -------
+    float
+    """
+    return 1000 / (rate_hz * math.sqrt(2))
