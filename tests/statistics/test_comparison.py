@@ -50,4 +50,4 @@ def test_a_comparison_is_frozen_and_names_its_term() -> None:
 
 def test_available_tests_are_those_that_can_be_declared() -> None:
     """The list is complete and in a fixed order."""
-    assert available_tests() == ("paired_t", "welch_t")
+    assert available_tests() == ("paired_t", "welch_t", "wilcoxon", "mann_whitney")

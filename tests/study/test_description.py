@@ -201,7 +201,7 @@ MISTAKES = {
         "line 38",
         "questions[0].test",
         "welch_t",
-        "paired_t with within",
+        "paired_t or wilcoxon with within",
         "Change test",
     ),
     "raw file absent": Mistake(
@@ -368,7 +368,7 @@ QUESTION_FAULTS = {
         "questions[0]",
     ),
     "one level twice": ("[night, day]", "[night, night]", "questions[0].contrast"),
-    "a test not available yet": ("test: paired_t", "test: wilcoxon", "questions[0].test"),
+    "a test not available yet": ("test: paired_t", "test: rm_anova", "questions[0].test"),
     "the name of another question": ("heart rate by crew", "alpha by shift", "questions[1].name"),
     "a confidence of 95": (
         "test: paired_t",

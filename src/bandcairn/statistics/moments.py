@@ -40,4 +40,9 @@ def is_rounding(spread: float, values: Sequence[float]) -> bool:
     Differences that are equal on paper (1.1 - 1.0 and 2.1 - 2.0) have a spread near 1e-16 in floats; a t of
     1e15 made of it would be noise.
     """
-    return spread <= _ROUNDING * max(abs(value) for value in values)
+    return spread <= rounding_of(values)
+
+
+def rounding_of(values: Sequence[float]) -> float:
+    """Return the rounding error that a difference of two of the values may have."""
+    return _ROUNDING * max(abs(value) for value in values)

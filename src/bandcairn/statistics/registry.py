@@ -9,6 +9,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, TypeAlias
 
 from bandcairn.errors import StepError
+from bandcairn.statistics.rank_tests import mann_whitney, wilcoxon
 from bandcairn.statistics.t_tests import paired_t, welch_t
 
 if TYPE_CHECKING:
@@ -22,6 +23,8 @@ if TYPE_CHECKING:
 _TESTS: dict[str, dict[str, Test]] = {
     "paired_t": {"within": paired_t},
     "welch_t": {"between": welch_t},
+    "wilcoxon": {"within": wilcoxon},
+    "mann_whitney": {"between": mann_whitney},
 }
 
 

@@ -3,18 +3,17 @@
 from __future__ import annotations
 
 import math
-import sys
 from typing import TYPE_CHECKING
 
 from bandcairn.statistics.effect_sizes import cohens_d_z, hedges_g
 from bandcairn.statistics.moments import is_rounding, mean, root_of_squares, standard_deviation
+from bandcairn.statistics.p_values import remarks_on, tellable
 from bandcairn.statistics.result import Effect, Interval, Outcome
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
 _FEWEST = 2
-_SMALLEST_P = sys.float_info.min
 
 
 def paired_t(first: Sequence[float], second: Sequence[float], confidence: float) -> Outcome:
@@ -99,16 +98,13 @@ def _outcome(estimate: float, error: float, df: float, confidence: float, effect
     statistic = estimate / error
     reach = float(stdtrit(df, 0.5 + confidence / 2)) * error
     p = 2 * float(stdtr(df, -abs(statistic)))
-    notes = (
-        () if p >= _SMALLEST_P else (f"p is below {_SMALLEST_P:.2g}, the smallest number that can be told",)
-    )
     return Outcome(
         status="ok",
         estimate=estimate,
         interval=Interval(estimate - reach, estimate + reach),
         statistic=statistic,
         df=float(df),
-        p=max(p, _SMALLEST_P),
+        p=tellable(p),
         effect=effect,
-        notes=notes,
+        notes=remarks_on(p),
     )

@@ -31,8 +31,10 @@ from bandcairn.units import KNOWN_UNITS
 # Contract names that no step computes yet: they are refused by name rather than as a misspelling.
 NOT_YET_AVAILABLE = {
     "method": ("multitaper", "lomb_scargle"),
-    "test": ("wilcoxon", "mann_whitney", "permutation", "rm_anova", "anova", "mixed_model", "regression"),
+    "test": ("permutation", "rm_anova", "anova", "mixed_model", "regression"),
 }
+# Which tests compare people with themselves, and which compare different people.
+TESTS_OF = {"within": ("paired_t", "wilcoxon"), "between": ("welch_t", "mann_whitney")}
 
 
 def _known_unit(unit: str) -> str:
@@ -382,9 +384,12 @@ class Question(Block):
         description="The two levels compared: the estimate is the first minus the second.",
         json_schema_extra=told("", "two different levels of the column"),
     )
-    test: Literal["paired_t", "welch_t"] = Field(
-        description="paired_t: differences within participants; welch_t: two groups of unequal variance.",
-        json_schema_extra=told("", "paired_t (with within) or welch_t (with between)"),
+    test: Literal["paired_t", "wilcoxon", "welch_t", "mann_whitney"] = Field(
+        description="paired_t, wilcoxon: differences within participants, by their mean or their ranks; "
+        "welch_t, mann_whitney: two groups, by means of unequal variance or by ranks.",
+        json_schema_extra=told(
+            "", "paired_t or wilcoxon (with within), welch_t or mann_whitney (with between)"
+        ),
     )
     family: Name | None = Field(
         default=None,
@@ -402,12 +407,10 @@ class Question(Block):
         if (self.within is None) == (self.between is None):
             found = "neither within nor between" if self.within is None else "both within and between"
             raise refusal("", found, "one of the two", "Name the column in within or in between.")
-        wanted = "paired_t" if self.between is None else "welch_t"
-        if self.test != wanted:
-            side = "within" if self.between is None else "between"
-            raise refusal(
-                "test", self.test, f"{wanted} with {side}", "Change test, or the kind of comparison."
-            )
+        side = "within" if self.between is None else "between"
+        if self.test not in TESTS_OF[side]:
+            allowed = f"{' or '.join(TESTS_OF[side])} with {side}"
+            raise refusal("test", self.test, allowed, "Change test, or the kind of comparison.")
         if self.contrast[0] == self.contrast[1]:
             raise refusal("contrast", f"{self.contrast[0]} twice", "two different levels", "Name two levels.")
         return self
