@@ -179,12 +179,45 @@ def test_a_stretch_beyond_the_end_of_the_file_is_refused(study_folder: Path) -> 
 
 def test_a_segment_beyond_the_end_of_the_file_is_refused(study_folder: Path) -> None:
     """The row of the segments table is named."""
-    table = "recording,segment,start_s,stop_s\np1d,rest,100,601\n"
+    others = "".join(f"{name},rest,100,600\n" for name in RECORDINGS[1:])
+    table = f"recording,segment,start_s,stop_s\np1d,rest,100,601\n{others}"
     (study_folder / "segments.csv").write_text(table, encoding="utf-8")
 
     (problem,) = check(study_folder, facts())
 
     assert (problem.file, problem.where) == ("segments.csv", "row 2, column stop_s")
+
+
+def test_a_recording_without_the_segments_that_others_have_is_refused(study_folder: Path) -> None:
+    """Else its whole length would stand, unnoticed, beside the segments of the others."""
+    others = "".join(f"{name},rest,100,600\n" for name in RECORDINGS[1:])
+    (study_folder / "segments.csv").write_text(
+        f"recording,segment,start_s,stop_s\n{others}", encoding="utf-8"
+    )
+
+    problems = check(study_folder, facts(), replaced=(("kind: ecg", "kind: ecg\n    segments: []"),))
+
+    assert {(problem.where, problem.field) for problem in problems} == {
+        ("recording p1d", "signals.eeg.segments"),
+        ("recording p1d", "signals.biceps.segments"),
+    }
+    assert {problem.found for problem in problems} == {"no segment"}
+    assert "segments: []" in problems[0].remedy
+
+
+def test_a_recording_without_a_segment_that_the_signal_names_is_refused(study_folder: Path) -> None:
+    """It is named with the segment it lacks."""
+    rows = "p1n,work,0,300\n"
+    (study_folder / "segments.csv").write_text(f"recording,segment,start_s,stop_s\n{rows}", encoding="utf-8")
+    named = (
+        ("kind: ecg", "kind: ecg\n    segments: [work]"),
+        ("feature: heart_rate", "feature: heart_rate\n    segment: work"),
+    )
+
+    problems = check(study_folder, facts(), replaced=named)
+
+    lacking = {problem.where for problem in problems if problem.found == "no segment work"}
+    assert lacking == {f"recording {name}" for name in RECORDINGS if name != "p1n"}
 
 
 def test_an_annotation_that_no_file_holds_is_refused(study_folder: Path) -> None:

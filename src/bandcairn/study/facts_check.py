@@ -82,6 +82,7 @@ def check_facts(study: LoadedStudy, facts: Mapping[str, FileFacts]) -> tuple[Pro
         cases = list(_cases(study, rows, facts, segments, name))
         problems += [problem for case in cases for problem in _check_case(case)]
         problems += _check_common_rate(cases)
+        problems += _check_segments_declared(cases)
     problems += _check_annotations(study, facts)
     problems += _check_events(study, facts)
     return tuple(dict.fromkeys(problems))
@@ -347,13 +348,12 @@ def _stretches_s(case: _Case) -> list[float]:
     if whole is None:
         return []
     segments = _segments(case)
-    used = {
-        segment: (start_s, stop_s)
-        for segment, start_s, stop_s in segments
-        if case.signal.segments is None or segment in case.signal.segments
-    }
     if segments and case.signal.segments != ():
-        return [_longest_s(case, start_s, stop_s) for start_s, stop_s in used.values()]
+        return [
+            _longest_s(case, start_s, stop_s)
+            for segment, start_s, stop_s in segments
+            if case.signal.segments is None or segment in case.signal.segments
+        ]
     return [_longest_s(case, *whole)]
 
 
@@ -364,9 +364,26 @@ def _segments(case: _Case) -> list[tuple[str, float, float]]:
         return [
             (note.text, note.onset_s, note.onset_s + note.duration_s)
             for note in case.facts.annotations
-            if note.text in declared.annotations
+            if note.text in declared.annotations and note.duration_s > 0
         ]
     return [(row.segment, row.start_s, row.stop_s) for row in case.segments]
+
+
+def _check_segments_declared(cases: list[_Case]) -> Iterator[Problem]:
+    """Yield the recordings without a segment that a signal uses: else the whole recording would stand for it."""
+    declared = [{name for name, _, _ in _segments(case)} for case in cases]
+    some_are = any(declared)
+    for case, present in zip(cases, declared, strict=True):
+        wanted = case.signal.segments
+        if wanted is None and some_are and not present:
+            remedy = "Declare its segments, or write segments: [] in the signal to use whole recordings."
+            allowed = "segments in every recording, or in none"
+            yield case.refuse("segments", found="no segment", allowed=allowed, remedy=remedy)
+        for name in wanted or ():
+            if name not in present:
+                remedy = "Declare it for this recording, or leave the recording out of the table."
+                allowed = "every segment that the signal names"
+                yield case.refuse("segments", found=f"no segment {name}", allowed=allowed, remedy=remedy)
 
 
 def _check_common_rate(cases: list[_Case]) -> Iterator[Problem]:
