@@ -186,7 +186,8 @@ def _check_resolution(path: Path, signal: AnySignal) -> Iterator[Fault]:
     if segment_s is not None and segment_s > longest_s:
         allowed = f"at most {epoch_key}, {epoch_s:g} s"
         if longest_s < epoch_s:
-            allowed = f"at most {longest_s:g} s: {epoch_key} less an interval between beats at either end"
+            most = f"at most {longest_s:g} s" if longest_s > 0 else "nothing"
+            allowed = f"{most}: {epoch_key}, {epoch_s:g} s, less an interval between beats at either end"
         remedy = "Shorten the segment, or lengthen the epoch."
         yield Fault((*path, "spectrum", "segment_s"), f"{segment_s:g} s", allowed, remedy)
     if isinstance(signal, EmgSignal):
