@@ -88,7 +88,7 @@ def test_ties_correct_the_variance_as_in_an_independent_library() -> None:
 
 @pytest.mark.parametrize("n", [8, 12])
 def test_tied_ranks_are_counted_as_by_an_independent_library(n: int) -> None:
-    """Independent library (scipy.stats.permutation_test, whose 10 000 are more than all signs): counts, a few roundings."""
+    """Independent library (scipy.stats.permutation_test over all signs): a few roundings."""
     differences = np.random.default_rng(n).integers(-3, 6, n).astype(float)
     differences = differences[differences != 0]
     ranks = stats.rankdata(np.abs(differences)) * np.sign(differences)

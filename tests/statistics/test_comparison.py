@@ -28,6 +28,7 @@ _SOUND: dict[str, Any] = {
         ({"scale": "log2"}, "scale: found 'log2'; allowed: identity, log10, ln, logit"),
         ({"second": "night"}, "contrast: found 'night' twice"),
         ({"confidence": 0.5}, r"confidence: found 0\.5; allowed: above 0\.5 and below 1"),
+        ({"seed": -1}, "seed: found -1; allowed: a whole number, 0 or above"),
         ({"confidence": 95}, "confidence: found 95"),
         ({"confidence": float("nan")}, "confidence: found nan"),
     ],
@@ -50,4 +51,4 @@ def test_a_comparison_is_frozen_and_names_its_term() -> None:
 
 def test_available_tests_are_those_that_can_be_declared() -> None:
     """The list is complete and in a fixed order."""
-    assert available_tests() == ("paired_t", "welch_t", "wilcoxon", "mann_whitney")
+    assert available_tests() == ("paired_t", "welch_t", "wilcoxon", "mann_whitney", "permutation")

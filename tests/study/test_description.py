@@ -201,7 +201,7 @@ MISTAKES = {
         "line 38",
         "questions[0].test",
         "welch_t",
-        "paired_t or wilcoxon with within",
+        "paired_t, wilcoxon or permutation with within",
         "Change test",
     ),
     "raw file absent": Mistake(
@@ -368,6 +368,8 @@ QUESTION_FAULTS = {
         "questions[0]",
     ),
     "one level twice": ("[night, day]", "[night, night]", "questions[0].contrast"),
+    "a seed without chance": ("test: paired_t", "test: paired_t\n    seed: 3", "questions[0].seed"),
+    "a negative seed": ("test: paired_t", "test: permutation\n    seed: -3", "questions[0].seed"),
     "a test not available yet": ("test: paired_t", "test: rm_anova", "questions[0].test"),
     "the name of another question": ("heart rate by crew", "alpha by shift", "questions[1].name"),
     "a confidence of 95": (

@@ -190,6 +190,7 @@ def _compared(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]], n_
         scale=question["scale"],
         confidence=question["confidence"],
         unit=rows[0]["unit"] if rows else "",
+        seed=question.get("seed", 0),
     )
     return compare(
         [value for value, _, _ in observations],

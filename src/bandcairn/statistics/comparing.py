@@ -84,7 +84,7 @@ def compare(
     ('night - day', 2.5, 5.0, 1.0)
     """
     sample = gather(values, participants, levels, comparison)
-    test = function_of(comparison.test, comparison.design)
+    test = function_of(comparison.test, comparison.design, comparison.seed)
     return _result(comparison, sample, test(sample.first, sample.second, comparison.confidence))
 
 

@@ -32,6 +32,8 @@ class Comparison:
         Coverage of both intervals, between 0.5 and 1.
     unit : str
         Unit of the measured value, as it shall stand in the result.
+    seed : int
+        Of the random arrangements of a permutation test, 0 or above; other tests draw no random numbers.
 
     Raises
     ------
@@ -48,6 +50,7 @@ class Comparison:
     scale: ScaleName = "identity"
     confidence: float = 0.95
     unit: str = ""
+    seed: int = 0
 
     def __post_init__(self) -> None:
         _refuse_other(self.design, designs_of(self.test), f"design of the test {self.test}")
@@ -56,6 +59,8 @@ class Comparison:
             raise StepError(f"contrast: found {self.first!r} twice; allowed: two different levels")
         if not 0.5 < self.confidence < 1:
             raise StepError(f"confidence: found {self.confidence}; allowed: above 0.5 and below 1")
+        if self.seed < 0:
+            raise StepError(f"seed: found {self.seed}; allowed: a whole number, 0 or above")
 
     @property
     def term(self) -> str:

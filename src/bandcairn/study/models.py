@@ -31,10 +31,13 @@ from bandcairn.units import KNOWN_UNITS
 # Contract names that no step computes yet: they are refused by name rather than as a misspelling.
 NOT_YET_AVAILABLE = {
     "method": ("multitaper", "lomb_scargle"),
-    "test": ("permutation", "rm_anova", "anova", "mixed_model", "regression"),
+    "test": ("rm_anova", "anova", "mixed_model", "regression"),
 }
 # Which tests compare people with themselves, and which compare different people.
-TESTS_OF = {"within": ("paired_t", "wilcoxon"), "between": ("welch_t", "mann_whitney")}
+TESTS_OF = {
+    "within": ("paired_t", "wilcoxon", "permutation"),
+    "between": ("welch_t", "mann_whitney", "permutation"),
+}
 
 
 def _known_unit(unit: str) -> str:
@@ -384,12 +387,20 @@ class Question(Block):
         description="The two levels compared: the estimate is the first minus the second.",
         json_schema_extra=told("", "two different levels of the column"),
     )
-    test: Literal["paired_t", "wilcoxon", "welch_t", "mann_whitney"] = Field(
+    test: Literal["paired_t", "wilcoxon", "welch_t", "mann_whitney", "permutation"] = Field(
         description="paired_t, wilcoxon: differences within participants, by their mean or their ranks; "
-        "welch_t, mann_whitney: two groups, by means of unequal variance or by ranks.",
+        "welch_t, mann_whitney: two groups, by means of unequal variance or by ranks; "
+        "permutation: mean difference, by flipping signs or exchanging people.",
         json_schema_extra=told(
-            "", "paired_t or wilcoxon (with within), welch_t or mann_whitney (with between)"
+            "",
+            "paired_t, wilcoxon or permutation (with within), "
+            "welch_t, mann_whitney or permutation (with between)",
         ),
+    )
+    seed: Annotated[int, Field(strict=True, ge=0)] | None = Field(
+        default=None,
+        description="Seed of a permutation test with more than 32768 arrangements; absent: 0.",
+        json_schema_extra=told("", "a whole number, 0 or above; permutation only"),
     )
     family: Name | None = Field(
         default=None,
@@ -409,8 +420,12 @@ class Question(Block):
             raise refusal("", found, "one of the two", "Name the column in within or in between.")
         side = "within" if self.between is None else "between"
         if self.test not in TESTS_OF[side]:
-            allowed = f"{' or '.join(TESTS_OF[side])} with {side}"
+            allowed = f"{', '.join(TESTS_OF[side][:-1])} or {TESTS_OF[side][-1]} with {side}"
             raise refusal("test", self.test, allowed, "Change test, or the kind of comparison.")
+        if self.seed is not None and self.test != "permutation":
+            raise refusal(
+                "seed", str(self.seed), f"no seed with {self.test}", "Delete it, or use permutation."
+            )
         if self.contrast[0] == self.contrast[1]:
             raise refusal("contrast", f"{self.contrast[0]} twice", "two different levels", "Name two levels.")
         return self
