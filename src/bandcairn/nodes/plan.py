@@ -344,6 +344,7 @@ def _least(signal: SignalDescription) -> dict[str, int]:
     return {} if signal.epoch.least is None else {"least": signal.epoch.least}
 
 
+@cache
 def _exact(rate_hz: Fraction | float | None) -> Fraction:
     """Return a rate as the fraction its shortest text means: 102.4 and 512/5 are one rate."""
     return Fraction(str(rate_hz))
@@ -415,7 +416,7 @@ def _statistics_node(
     signals = study.description.signals
     parameters = {
         "family": family,
-        "adjustment": "holm",
+        "adjustment": questions[0].adjustment or "holm",
         "questions": [
             _question(question, signals[question.signal].measured_channels) for question in questions
         ],
@@ -431,4 +432,4 @@ def _statistics_node(
 def _question(question: Question, channels: tuple[str, ...]) -> dict[str, Any]:
     """Return a question with the names of its channels written out."""
     named = channels if isinstance(question.channels, str) else question.channels
-    return {**_recipe(question, exclude={"family"}), "channel_names": named}
+    return {**_recipe(question, exclude={"family", "adjustment"}), "channel_names": named}
