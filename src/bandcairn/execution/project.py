@@ -106,7 +106,7 @@ def open_project(folder: Path, progress: Callable[[int, int], None] | None = Non
 
 @contextmanager
 def _all_is_kept() -> Iterator[None]:
-    """Let no one look for garbage meanwhile: there is none among the objects of a plan, and the looking takes a fifth."""
+    """Let no one look for garbage meanwhile: a plan makes none, and looking for it takes a fifth of the time."""
     was_on = gc.isenabled()
     gc.disable()
     try:
