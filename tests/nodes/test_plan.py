@@ -109,6 +109,12 @@ FATIGUE = of("fatigue by shift", "statistics")
             of("arm", "epoch", "spectrum", "features", "table") | FATIGUE,
         ),
         ("scale: log10", "scale: ln", WATCH),
+        (
+            "feature: median_frequency\n",
+            "feature: median_frequency\n    adjustment: benjamini_hochberg\n",
+            FATIGUE,
+        ),
+        ("feature: median_frequency\n", "feature: median_frequency\n    adjustment: holm\n", set()),
         ("name: fatigue by shift", "name: fatigue at night", FATIGUE | of("fatigue at night", "statistics")),
         ("study: Harbour", "study: Lighthouse", set()),
         (

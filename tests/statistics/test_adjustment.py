@@ -72,4 +72,39 @@ def test_an_unknown_method_is_refused_with_the_known_ones() -> None:
 
 def test_available_adjustments_are_those_that_can_be_declared() -> None:
     """The list is complete."""
-    assert available_adjustments() == ("holm",)
+    assert available_adjustments() == (
+        "holm", "bonferroni", "benjamini_hochberg", "benjamini_yekutieli", "none",
+    )  # fmt: skip
+
+
+def test_false_discovery_steps_up_from_the_largest() -> None:
+    """0.04 x 3/3, then min(0.04, 0.03 x 3/2), then min(0.04, 0.01 x 3); dependence costs 1 + 1/2 + 1/3 as much."""
+    p_values = [0.03, 0.01, 0.04]
+
+    assert adjust(p_values, "benjamini_hochberg") == pytest.approx((0.04, 0.03, 0.04), rel=1e-15)
+    assert adjust(p_values, "benjamini_yekutieli") == pytest.approx((0.22 / 3, 0.055, 0.22 / 3), rel=1e-15)
+
+
+def test_bonferroni_multiplies_and_none_leaves() -> None:
+    """By the size of the family, which absent tests do not raise; or not at all."""
+    assert adjust([0.2, None, 0.6], "bonferroni") == (0.4, None, 1.0)
+    assert adjust([0.2, None, 0.6], "none") == (0.2, None, 0.6)
+
+
+@pytest.mark.parametrize("method", available_adjustments())
+@pytest.mark.parametrize("p_values", [[], [None], [0.3]])
+def test_every_method_answers_a_family_of_one_or_none(method: str, p_values: list[float | None]) -> None:
+    """Nothing to adjust for leaves what there is."""
+    assert adjust(p_values, method) == tuple(p_values)
+
+
+@pytest.mark.parametrize("method", available_adjustments())
+def test_every_method_adjusts_ties_alike_keeps_the_order_and_stays_within_raw_and_one(method: str) -> None:
+    """Whatever the order of the family."""
+    p_values = [*np.random.default_rng(3).uniform(0, 0.3, 15).tolist(), 0.1, 0.1, 0.0, 1.0]
+    adjusted = adjust(p_values, method)
+
+    assert adjust(p_values[::-1], method) == adjusted[::-1]
+    assert adjusted[15] == adjusted[16]
+    assert all(found is not None and p <= found <= 1 for p, found in zip(p_values, adjusted, strict=True))
+    assert [found for _, found in sorted(zip(p_values, adjusted, strict=True))] == sorted(adjusted)  # type: ignore[type-var]

@@ -368,6 +368,15 @@ QUESTION_FAULTS = {
         "questions[0]",
     ),
     "one level twice": ("[night, day]", "[night, night]", "questions[0].contrast"),
+    "two adjustments in a family": (
+        "test: paired_t\n",
+        """test: paired_t
+    family: x
+    adjustment: none
+  - {name: b, signal: heart, feature: sdnn, within: condition, contrast: [night, day], test: paired_t, family: x}
+""",
+        "questions[1].adjustment",
+    ),
     "a seed without chance": ("test: paired_t", "test: paired_t\n    seed: 3", "questions[0].seed"),
     "a negative seed": ("test: paired_t", "test: permutation\n    seed: -3", "questions[0].seed"),
     "a test not available yet": ("test: paired_t", "test: rm_anova", "questions[0].test"),

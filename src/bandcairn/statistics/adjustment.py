@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING
 
 from bandcairn.errors import StepError
@@ -59,4 +60,49 @@ def _holm(p_values: list[float]) -> list[float]:
     return adjusted
 
 
-_ADJUSTMENTS: dict[str, Callable[[list[float]], list[float]]] = {"holm": _holm}
+def _bonferroni(p_values: list[float]) -> list[float]:
+    """Hold the family-wise error rate under any dependence, each p value times their number.
+
+    References
+    ----------
+    Dunn OJ (1961) Multiple comparisons among means. J Am Stat Assoc 56:52-64.
+    """
+    return [min(1.0, len(p_values) * p) for p in p_values]
+
+
+def _benjamini_hochberg(p_values: list[float]) -> list[float]:
+    """Hold the false discovery rate of independent or positively dependent tests, step by step from the largest.
+
+    References
+    ----------
+    Benjamini Y, Hochberg Y (1995) Controlling the false discovery rate. J R Stat Soc B 57:289-300.
+    """
+    n = len(p_values)
+    adjusted = [0.0] * n
+    smallest = 1.0
+    for rank, place in sorted(enumerate(sorted(range(n), key=p_values.__getitem__), start=1), reverse=True):
+        smallest = min(smallest, n / rank * p_values[place])
+        adjusted[place] = smallest
+    return adjusted
+
+
+def _benjamini_yekutieli(p_values: list[float]) -> list[float]:
+    """Hold the false discovery rate under any dependence.
+
+    References
+    ----------
+    Benjamini Y, Yekutieli D (2001) The control of the false discovery rate in multiple testing under dependency. Ann
+    Stat 29:1165-1188.
+    """
+    dearer = math.fsum(1 / rank for rank in range(1, len(p_values) + 1))
+    return [min(1.0, dearer * p) for p in _benjamini_hochberg(p_values)] if p_values else []
+
+
+# In the order in which they are told.
+_ADJUSTMENTS: dict[str, Callable[[list[float]], list[float]]] = {
+    "holm": _holm,
+    "bonferroni": _bonferroni,
+    "benjamini_hochberg": _benjamini_hochberg,
+    "benjamini_yekutieli": _benjamini_yekutieli,
+    "none": list,
+}

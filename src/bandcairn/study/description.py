@@ -14,6 +14,7 @@ from bandcairn.study.question_checks import (
     Design,
     check_columns,
     check_design,
+    check_families,
     check_feature,
     check_names_unique,
     check_segment,
@@ -142,7 +143,9 @@ def _read_description(folder: Path) -> Document:
     try:
         text = (folder / STUDY_FILE).read_text(encoding="utf-8-sig")
     except OSError as error:
-        remedy = "Name the folder that holds study.yaml; `bandcairn new` drafts one from a folder of recordings."
+        remedy = (
+            "Name the folder that holds study.yaml; `bandcairn new` drafts one from a folder of recordings."
+        )
         found = error.strerror or "no such file"
         raise StudyError((Problem(STUDY_FILE, "", str(folder), found, "a study folder", remedy),)) from None
     except UnicodeDecodeError as error:
@@ -253,6 +256,7 @@ def _inconsistencies(
         if segments_readable:
             yield from check_segment_names(name, signal, design.segments)
     yield from check_names_unique(understood.questions)
+    yield from check_families(understood.questions)
     for index, question in understood.questions.items():
         yield from check_signal_named(index, question, understood.declared_signals)
         # A signal that lost a key may have lost the very band a question names: that is one fault, not two.

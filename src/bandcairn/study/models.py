@@ -407,6 +407,17 @@ class Question(Block):
         description="p values of one family are adjusted together; absent: the question is its own family.",
         json_schema_extra=told("", "text"),
     )
+    adjustment: Literal["holm", "bonferroni", "benjamini_hochberg", "benjamini_yekutieli", "none"] | None = (
+        Field(
+            default=None,
+            description="What the adjusted p values of the family hold: the family-wise error rate (holm, bonferroni), "
+            "the false discovery rate (benjamini_hochberg, benjamini_yekutieli) or nothing; absent: holm.",
+            json_schema_extra=told(
+                "",
+                "holm, bonferroni, benjamini_hochberg, benjamini_yekutieli or none; the same in a whole family",
+            ),
+        )
+    )
     confidence: Annotated[Number, Field(gt=0.5, lt=1)] = Field(
         default=0.95,
         description="Coverage of the confidence intervals.",

@@ -55,6 +55,19 @@ def check_names_unique(questions: Mapping[int, Question]) -> Iterator[Fault]:
             yield Fault(("questions", index, "name"), found, "each name once", "Rename one of them.")
 
 
+def check_families(questions: Mapping[int, Question]) -> Iterator[Fault]:
+    """Yield each question that is adjusted otherwise than the first of its family: they are adjusted together."""
+    first: dict[str, int] = {}
+    for index, question in questions.items():
+        opening = first.setdefault(question.family or question.name, index)
+        wanted = questions[opening].adjustment or "holm"
+        found = question.adjustment or "holm"
+        if found != wanted:
+            allowed = f"{wanted}, as in questions[{opening}] of the same family"
+            remedy = "Write the same adjustment in every question of the family, or part the family."
+            yield Fault(("questions", index, "adjustment"), found, allowed, remedy)
+
+
 def check_signal_named(index: int, question: Question, declared: tuple[str, ...]) -> Iterator[Fault]:
     """Yield a fault where the question names a signal that is not declared."""
     if question.signal not in declared:
