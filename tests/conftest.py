@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 import pytest
+from hypothesis import HealthCheck, settings
 
 from bandcairn.recordings.export import ExportChannel, write_delimited, write_edf
 
@@ -14,6 +15,13 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from numpy.typing import NDArray
+
+# Property tests: the same examples every time, and no failure because a machine is busy.
+settings.register_profile(
+    "calm", derandomize=True, deadline=None, suppress_health_check=[HealthCheck.too_slow]
+)
+settings.load_profile("calm")
+
 
 LENGTH_S = 60
 CONDITIONS = ("day", "night")

@@ -114,7 +114,7 @@ def test_a_file_whose_writing_fails_stays_as_it_was(tmp_path: Path) -> None:
 
 def test_a_number_of_the_wrong_type_is_refused(tmp_path: Path) -> None:
     """A table never turns what it got into something else."""
-    with pytest.raises(ValueError, match="tried to convert to int64"):
+    with pytest.raises(ValueError, match="three"):
         write_table(tmp_path, "features", {"epochs": "count"}, [{"epochs": "three"}])
     assert list(tmp_path.iterdir()) == []
 

@@ -15,6 +15,7 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 
+from bandcairn.store.arrays import number_array, numbers_of, text_array
 from bandcairn.store.frame import Frame, has_nan
 
 if TYPE_CHECKING:
@@ -89,16 +90,13 @@ def _sha256(content: bytes) -> bytes:
 
 def _to_arrow(column: Column) -> pa.Array:
     if isinstance(column, tuple):
-        return pa.array(column, pa.string())
+        return text_array(column)
     if column.dtype.kind == "f" and has_nan(column):
-        return pa.array(column, from_pandas=True)
-    return pa.array(np.ascontiguousarray(column))
+        return number_array(column, ~np.isnan(column))
+    return number_array(column)
 
 
 def _from_arrow(column: pa.ChunkedArray) -> Column:
     if pa.types.is_string(column.type):
         return tuple(column.to_pylist())
-    values = column.chunk(0) if column.num_chunks == 1 else column.combine_chunks()
-    numbers: np.ndarray[Any, Any] = values.to_numpy(zero_copy_only=False)
-    numbers.flags.writeable = False
-    return numbers
+    return numbers_of(column.chunk(0) if column.num_chunks == 1 else column.combine_chunks())

@@ -5,19 +5,27 @@ from __future__ import annotations
 import csv
 import io
 import os
+from functools import partial
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 
 from bandcairn.errors import DamagedNodeError
+from bandcairn.store.arrays import optional_flags, optional_numbers, text_array
 from bandcairn.store.layout import PRIVATE_FILE, make_private_folder, temporary_path
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterable, Mapping, Sequence
     from pathlib import Path
 
-_TYPES = {"text": pa.string(), "number": pa.float64(), "count": pa.int64(), "yes_no": pa.bool_()}
+_ARRAYS: dict[str, Callable[[Sequence[Any]], pa.Array]] = {
+    "text": text_array,
+    "number": partial(optional_numbers, dtype=np.float64),
+    "count": partial(optional_numbers, dtype=np.int64),
+    "yes_no": optional_flags,
+}
 
 
 def write_table(
@@ -43,7 +51,7 @@ def write_table(
     """
     make_private_folder(folder)
     columns = {column: [row.get(column) for row in rows] for column in schema}
-    table = pa.table({column: pa.array(columns[column], _TYPES[kind]) for column, kind in schema.items()})
+    table = pa.table({column: _ARRAYS[kind](columns[column]) for column, kind in schema.items()})
     parquet, text = folder / f"{name}.parquet", folder / f"{name}.csv"
     replace_file(parquet, lambda path: pq.write_table(table, path, compression="zstd"))
     replace_file(text, lambda path: path.write_text(csv_text(list(schema), columns.values()), "utf-8"))
