@@ -28,6 +28,7 @@ _FACTS = b"bandcairn"
 _RECORD = b"bandcairn_record"
 _RECORD_SHA256 = b"bandcairn_record_sha256"
 _WHOLE_FILE = 1 << 62
+_LARGE_BYTES = 1 << 20
 
 
 def write_frame(path: Path, frame: Frame, record: Mapping[str, Any]) -> None:
@@ -41,20 +42,29 @@ def write_frame(path: Path, frame: Frame, record: Mapping[str, Any]) -> None:
     told = json.dumps(dict(record)).encode()
     metadata = {_FACTS: json.dumps(dict(frame.facts)), _RECORD: told, _RECORD_SHA256: _sha256(told)}
     table = pa.Table.from_arrays(arrays, schema=pa.schema(fields, metadata))
-    packed = {field.name: "DELTA_BINARY_PACKED" for field in fields if pa.types.is_integer(field.type)}
-    # A file that is already open spares the search for a file system, which small nodes would feel.
-    with pa.OSFile(str(path), "wb") as file:
-        pq.write_table(
-            table,
-            file,
-            use_dictionary=False,
-            compression="none",
-            write_statistics=False,
-            column_encoding=packed or None,
-            data_page_size=64 << 20,
-            write_batch_size=1 << 16,
-            row_group_size=_WHOLE_FILE,
-        )
+    if frame.nbytes < _LARGE_BYTES:
+        # Made in memory and written at once: many small writes cost a small node more than its making.
+        content = pa.BufferOutputStream()
+        _encode(table, content)
+        path.write_bytes(content.getvalue())
+    else:
+        with pa.OSFile(str(path), "wb") as file:
+            _encode(table, file)
+
+
+def _encode(table: pa.Table, sink: pa.NativeFile) -> None:
+    packed = {field.name: "DELTA_BINARY_PACKED" for field in table.schema if pa.types.is_integer(field.type)}
+    with pq.ParquetWriter(
+        sink,
+        table.schema,
+        use_dictionary=False,
+        compression="none",
+        write_statistics=False,
+        column_encoding=packed or None,
+        data_page_size=64 << 20,
+        write_batch_size=1 << 16,
+    ) as writer:
+        writer.write_table(table, row_group_size=_WHOLE_FILE)
 
 
 def read_frame(path: Path) -> tuple[Frame, dict[str, Any]]:
@@ -65,11 +75,18 @@ def read_frame(path: Path) -> tuple[Frame, dict[str, Any]]:
     OSError, pyarrow.ArrowException, KeyError, TypeError, ValueError
         If the file is no whole node, or its record does not match the digest written with it.
     """
-    with pa.memory_map(str(path)) as source, pq.ParquetFile(source, pre_buffer=False) as file:
+    with _opened(path) as source, pq.ParquetFile(source, pre_buffer=False) as file:
         table = file.read(use_threads=False)
     metadata = table.schema.metadata or {}
     columns = {name: _from_arrow(table.column(name)) for name in table.column_names}
     return Frame(columns, json.loads(metadata[_FACTS])), _record(metadata)
+
+
+def _opened(path: Path) -> pa.NativeFile:
+    """Open a file for reading: a small one by one read, a large one mapped into memory."""
+    if path.stat().st_size < _LARGE_BYTES:
+        return pa.BufferReader(path.read_bytes())
+    return pa.memory_map(str(path))
 
 
 def read_record(path: Path) -> dict[str, Any]:
