@@ -76,6 +76,10 @@ class Study:
         """Return ``results/statistics``: one row an answer."""
         return self._table("statistics")
 
+    def descriptives(self) -> pd.DataFrame:
+        """Return ``results/descriptives``: one row a cell of an answer, or its differences."""
+        return self._table("descriptives")
+
     def quality(self) -> pd.DataFrame:
         """Return ``results/quality``: one row a channel and measure."""
         return self._table("quality")

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import asdict
+from dataclasses import asdict, dataclass
 from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
@@ -14,7 +14,7 @@ from bandcairn.store.frame import Frame
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Mapping, Sequence
 
-    from bandcairn.statistics import Result
+    from bandcairn.statistics import Comparison
     from bandcairn.store.frame import Column
 
 # The features of the contract, and the counts of rejected epochs from which the exclusions are told.
@@ -149,9 +149,41 @@ def statistics_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame])
     return rows_to_frame(rows, STATISTICS_COLUMNS)
 
 
-def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> Iterator[dict[str, Any]]:
-    """Yield one answer a channel, or one for the mean of the channels."""
-    rows = [
+@dataclass(frozen=True, slots=True)
+class Asked:
+    """A question as it is asked of one channel, or of the mean of several.
+
+    Attributes
+    ----------
+    channel : str
+        The channel, or ``"mean"``.
+    rows : tuple of mapping
+        Rows of features that bear on it.
+    comparison : Comparison
+        What is asked.
+    values, participants, levels : list
+        One item a recording and segment.
+    """
+
+    channel: str
+    rows: tuple[Mapping[str, Any], ...]
+    comparison: Comparison
+    values: list[float | None]
+    participants: list[str]
+    levels: list[str]
+
+
+def asked_of(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> Iterator[Asked]:
+    """Yield a question for each channel, or once for the mean of the channels.
+
+    Parameters
+    ----------
+    question : mapping
+        The question as it stands in the recipe of its node.
+    rows : sequence of mapping
+        The table of its signal.
+    """
+    fitting = [
         row
         for row in rows
         if row["feature"] == question["feature"]
@@ -159,31 +191,29 @@ def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> 
         and question.get("segment", row["segment"]) == row["segment"]
     ]
     channels = question["channel_names"]
-    groups = [channels] if question["channels"] == "mean" else [[channel] for channel in channels]
-    for group in groups:
-        of_group = [row for row in rows if row["channel"] in group]
-        result = _compared(question, of_group, len(group))
-        yield {
-            **asdict(result),
-            "note": "; ".join(filter(None, (result.note, uneven_epochs(question, of_group)))) or None,
-            "question": question["name"],
-            "signal": question["signal"],
-            "channel": "mean" if question["channels"] == "mean" else group[0],
-            "feature": question["feature"],
-            "band": question.get("band"),
-        }
+    of_mean = question["channels"] == "mean"
+    for group in [channels] if of_mean else [[channel] for channel in channels]:
+        mine = tuple(row for row in fitting if row["channel"] in group)
+        factor: str = question.get("within") or question["between"]
+        observations = list(_observations(mine, len(group), factor))
+        yield Asked(
+            channel="mean" if of_mean else group[0],
+            rows=mine,
+            comparison=_comparison(question, mine),
+            values=[value for value, _, _ in observations],
+            participants=[participant for _, participant, _ in observations],
+            levels=[level for _, _, level in observations],
+        )
 
 
-def _compared(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]], n_channels: int) -> Result:
-    from bandcairn.statistics import Comparison, compare
+def _comparison(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> Comparison:
+    from bandcairn.statistics import Comparison
 
     design: Literal["within", "between"] = "within" if "within" in question else "between"
-    factor: str = question[design]
-    observations = list(_observations(rows, n_channels, factor))
     first, second = question["contrast"]
-    comparison = Comparison(
+    return Comparison(
         design=design,
-        factor=factor,
+        factor=question[design],
         first=first,
         second=second,
         test=question["test"],
@@ -192,12 +222,31 @@ def _compared(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]], n_
         unit=rows[0]["unit"] if rows else "",
         seed=question.get("seed", 0),
     )
-    return compare(
-        [value for value, _, _ in observations],
-        [participant for _, participant, _ in observations],
-        [level for _, _, level in observations],
-        comparison,
-    )
+
+
+def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> Iterator[dict[str, Any]]:
+    """Yield one answer a channel, or one for the mean of the channels."""
+    from bandcairn.statistics import compare
+
+    for asked in asked_of(question, rows):
+        result = compare(asked.values, asked.participants, asked.levels, asked.comparison)
+        uneven = uneven_epochs(question, asked.rows)
+        yield {
+            **asdict(result),
+            "note": "; ".join(filter(None, (result.note, uneven))) or None,
+            **named(question, asked),
+        }
+
+
+def named(question: Mapping[str, Any], asked: Asked) -> dict[str, Any]:
+    """Return what tells a row of results apart from those of other questions and channels."""
+    return {
+        "question": question["name"],
+        "signal": question["signal"],
+        "channel": asked.channel,
+        "feature": question["feature"],
+        "band": question.get("band"),
+    }
 
 
 def uneven_epochs(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> str | None:

@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 from bandcairn.errors import DamagedNodeError
+from bandcairn.execution.descriptives import DESCRIPTIVES_SCHEMA, descriptives_rows
 from bandcairn.execution.exclusions import (
     EXCLUSIONS_SCHEMA,
     Place,
@@ -30,6 +31,8 @@ if TYPE_CHECKING:
     from bandcairn.store.store import Store
 
 RUN_FILE = "run.json"
+# The table that came last to the results: a run of an earlier version did not write it.
+_LATEST = "descriptives.parquet"
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,7 +71,9 @@ def published(project: Project) -> bool:
     if run.get("plan") != project.plan.id or run.get("words", "") != _words(project):
         return False
     files: Mapping[str, str] = run["files"]
-    return all(_sha256(project.results_folder / name) == digest for name, digest in files.items())
+    return _LATEST in files and all(
+        _sha256(project.results_folder / name) == digest for name, digest in files.items()
+    )
 
 
 def _words(project: Project) -> str:
@@ -131,15 +136,13 @@ def publish(
     )
     counts = list(epochs_rows(features))
     verdicts = [row for node in study_nodes if node.step == "verdict" for row in frames[node.key]]
-    statistics = [
-        row | {"node": node.key}
-        for node in study_nodes
-        if node.step == "statistics"
-        for row in frames[node.key]
-    ]
     tables = {
         "features": (_features_schema(project), with_words(project, features)),
-        "statistics": (STATISTICS_COLUMNS | {"node": "text"}, _in_order_of_questions(project, statistics)),
+        "statistics": (STATISTICS_COLUMNS | {"node": "text"}, _answers(project, study_nodes, frames)),
+        "descriptives": (
+            DESCRIPTIVES_SCHEMA,
+            _in_order_of_questions(project, list(descriptives_rows(study_nodes, frames))),
+        ),
         "quality": (VERDICT_COLUMNS | {"passed": "yes_no"}, [_with_truth(row) for row in verdicts]),
         "epochs": (epochs_schema(project), counts),
         "exclusions": (EXCLUSIONS_SCHEMA, list(_exclusions(project, counts, verdicts, failures))),
@@ -187,6 +190,15 @@ def _features(project: Project, rows: Sequence[Mapping[str, Any]]) -> list[dict[
     told = [{**row, **{name: row[f"{DESIGN}{name}"] for name in design}} for row in rows]
     order = ("recording", "participant", *design, "signal", "channel", "segment", "feature", "band")
     return sorted(told, key=lambda row: tuple(row[column] or "" for column in order))
+
+
+def _answers(
+    project: Project, study_nodes: Sequence[Node], frames: Mapping[str, Sequence[dict[str, Any]]]
+) -> list[dict[str, Any]]:
+    """Return the rows of the statistics, each with the node it comes from."""
+    nodes = [node for node in study_nodes if node.step == "statistics"]
+    rows = [row | {"node": node.key} for node in nodes for row in frames[node.key]]
+    return _in_order_of_questions(project, rows)
 
 
 def _in_order_of_questions(project: Project, rows: Sequence[dict[str, Any]]) -> list[dict[str, Any]]:

@@ -9,15 +9,18 @@ from __future__ import annotations
 from bandcairn.statistics.adjustment import adjust, available_adjustments
 from bandcairn.statistics.comparing import compare, compare_table
 from bandcairn.statistics.comparison import Comparison
+from bandcairn.statistics.descriptives import Description, describe
 from bandcairn.statistics.registry import available_tests
 from bandcairn.statistics.result import Result
 
 __all__ = [
     "Comparison",
+    "Description",
     "Result",
     "adjust",
     "available_adjustments",
     "available_tests",
     "compare",
     "compare_table",
+    "describe",
 ]

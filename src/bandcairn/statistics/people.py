@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from bandcairn.errors import StepError
 from bandcairn.statistics.moments import mean
-from bandcairn.statistics.scales import Scale, scale_of
+from bandcairn.statistics.scales import scale_of
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
@@ -30,6 +30,10 @@ class Sample:
         Measured values behind them.
     notes : tuple of str
         Who was left out and why, and what was dropped or averaged.
+    first_measured, second_measured : tuple of float
+        The same people's values as measured.
+    n_first_available, n_second_available : int
+        People with a usable value at the level, whether they count or not: a pair may lack its other half.
     """
 
     first: tuple[float, ...]
@@ -37,6 +41,10 @@ class Sample:
     n_participants: int
     n_observations: int
     notes: tuple[str, ...]
+    first_measured: tuple[float, ...]
+    second_measured: tuple[float, ...]
+    n_first_available: int
+    n_second_available: int
 
 
 @dataclass(slots=True)
@@ -45,6 +53,15 @@ class _Cell:
 
     values: list[float] = field(default_factory=list)
     n_missing: int = 0
+
+
+@dataclass(frozen=True, slots=True)
+class _Kept:
+    """The cells that count, and the word on the others."""
+
+    first: list[_Cell]
+    second: list[_Cell]
+    notes: list[str]
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,10 +102,33 @@ def gather(
         if level in by_level:
             _put(value, by_level[level].setdefault(_name(person, row), _Cell()), row)
     absent = _absent_levels(by_level, levels)
-    sample = _pairs(cells, comparison) if comparison.design == "within" else _groups(cells, comparison)
+    kept = _pairs(cells, comparison) if comparison.design == "within" else _groups(cells, comparison)
+    return _sample(kept, cells, comparison, absent)
+
+
+def _sample(kept: _Kept, cells: _Cells, comparison: Comparison, absent: tuple[str, ...]) -> Sample:
+    n_first, n_second = len(kept.first), len(kept.second)
+    n_observations = sum(len(cell.values) for cell in (*kept.first, *kept.second))
+    notes = [*absent, *kept.notes, *_averaged(n_observations, n_first + n_second)]
+    if comparison.design == "between":
+        notes.append(f"people: {comparison.first} {n_first}, {comparison.second} {n_second}")
+    first, second = (tuple(mean(cell.values) for cell in group) for group in (kept.first, kept.second))
+    scale = scale_of(comparison.scale)
     return Sample(
-        sample.first, sample.second, sample.n_participants, sample.n_observations, absent + sample.notes
+        first=tuple(scale.apply(value) for value in first),
+        second=tuple(scale.apply(value) for value in second),
+        n_participants=n_first if comparison.design == "within" else n_first + n_second,
+        n_observations=n_observations,
+        notes=tuple(notes),
+        first_measured=first,
+        second_measured=second,
+        n_first_available=_n_available(cells.first, comparison.first, comparison.scale),
+        n_second_available=_n_available(cells.second, comparison.second, comparison.scale),
     )
+
+
+def _n_available(column: dict[str, _Cell], level: str, scale: str) -> int:
+    return sum(not _fault(cell, level, scale) for cell in column.values())
 
 
 def _refuse_unequal_lengths(*columns: Sequence[object]) -> None:
@@ -126,9 +166,8 @@ def _absent_levels(by_level: dict[str, dict[str, _Cell]], levels: Iterable[objec
     )
 
 
-def _pairs(cells: _Cells, comparison: Comparison) -> Sample:
+def _pairs(cells: _Cells, comparison: Comparison) -> _Kept:
     """Keep the people who have a usable value at both levels."""
-    scale = scale_of(comparison.scale)
     kept: list[str] = []
     notes: list[str] = []
     for person in cells.people():
@@ -143,12 +182,10 @@ def _pairs(cells: _Cells, comparison: Comparison) -> Sample:
             kept.append(person)
     first, second = ([column[person] for person in kept] for column in (cells.first, cells.second))
     notes += _remarks(kept, first, comparison.first) + _remarks(kept, second, comparison.second)
-    n_observations = _count([*first, *second])
-    notes += _averaged(n_observations, 2 * len(kept))
-    return Sample(_scaled(first, scale), _scaled(second, scale), len(kept), n_observations, tuple(notes))
+    return _Kept(first, second, notes)
 
 
-def _groups(cells: _Cells, comparison: Comparison) -> Sample:
+def _groups(cells: _Cells, comparison: Comparison) -> _Kept:
     """Keep the people of each group who have a usable value."""
     both = sorted(cells.first.keys() & cells.second.keys())
     if both:
@@ -156,7 +193,6 @@ def _groups(cells: _Cells, comparison: Comparison) -> Sample:
             f"{comparison.factor}: found {', '.join(both)} at {comparison.first} and at {comparison.second}; "
             "allowed: each participant in one group. Compare within participants, or correct the design column"
         )
-    scale = scale_of(comparison.scale)
     samples: list[list[_Cell]] = []
     notes: list[str] = []
     for level, column in ((comparison.first, cells.first), (comparison.second, cells.second)):
@@ -166,10 +202,7 @@ def _groups(cells: _Cells, comparison: Comparison) -> Sample:
         samples.append([column[person] for person in kept])
         notes += _remarks(kept, samples[-1], level)
     first, second = samples
-    n_people, n_observations = len(first) + len(second), _count([*first, *second])
-    notes += _averaged(n_observations, n_people)
-    notes.append(f"people: {comparison.first} {len(first)}, {comparison.second} {len(second)}")
-    return Sample(_scaled(first, scale), _scaled(second, scale), n_people, n_observations, tuple(notes))
+    return _Kept(first, second, notes)
 
 
 def _fault(cell: _Cell | None, level: str, scale_name: str) -> str:
@@ -183,14 +216,6 @@ def _fault(cell: _Cell | None, level: str, scale_name: str) -> str:
     if not scale.holds(centre):
         return f"{level} is {centre:.6g}, {scale_name} needs {scale.domain}"
     return ""
-
-
-def _scaled(cells: Iterable[_Cell], scale: Scale) -> tuple[float, ...]:
-    return tuple(scale.apply(mean(cell.values)) for cell in cells)
-
-
-def _count(cells: Iterable[_Cell]) -> int:
-    return sum(len(cell.values) for cell in cells)
 
 
 def _remarks(people: list[str], cells: list[_Cell], level: str) -> list[str]:
