@@ -377,6 +377,16 @@ QUESTION_FAULTS = {
 """,
         "questions[1].adjustment",
     ),
+    "bounds that leave out zero": (
+        "test: paired_t",
+        "test: paired_t\n    equivalence: [0.1, 0.2]",
+        "questions[0].equivalence",
+    ),
+    "equivalence by ranks": (
+        "test: paired_t",
+        "test: wilcoxon\n    equivalence: [-0.1, 0.1]",
+        "questions[0].equivalence",
+    ),
     "a seed without chance": ("test: paired_t", "test: paired_t\n    seed: 3", "questions[0].seed"),
     "a negative seed": ("test: paired_t", "test: permutation\n    seed: -3", "questions[0].seed"),
     "a test not available yet": ("test: paired_t", "test: rm_anova", "questions[0].test"),

@@ -14,7 +14,7 @@ from bandcairn.store.frame import Frame
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Mapping, Sequence
 
-    from bandcairn.statistics import Comparison
+    from bandcairn.statistics import Comparison, Result
     from bandcairn.store.frame import Column
 
 # The features of the contract, and the counts of rejected epochs from which the exclusions are told.
@@ -141,11 +141,16 @@ def statistics_node(parameters: Mapping[str, Any], parents: Mapping[str, Frame])
         for question in parameters["questions"]
         for row in _answers(question, frame_rows(parents[f"table/{question['signal']}"]))
     ]
-    adjusted = adjust([row["p"] for row in rows], parameters["adjustment"])
-    size = sum(row["p"] is not None for row in rows)
-    for row, p_adjusted in zip(rows, adjusted, strict=True):
-        row |= {"p_adjusted": p_adjusted, "adjustment": parameters["adjustment"]}
-        row |= {"family": parameters["family"], "family_size": size}
+    # That a difference is there and that it is negligible are two claims, each with a family of its own.
+    for alike in (
+        [row for row in rows if row["test"] != "tost"],
+        [row for row in rows if row["test"] == "tost"],
+    ):
+        adjusted = adjust([row["p"] for row in alike], parameters["adjustment"])
+        size = sum(row["p"] is not None for row in alike)
+        for row, p_adjusted in zip(alike, adjusted, strict=True):
+            row |= {"p_adjusted": p_adjusted, "adjustment": parameters["adjustment"]}
+            row |= {"family": parameters["family"], "family_size": size}
     return rows_to_frame(rows, STATISTICS_COLUMNS)
 
 
@@ -225,17 +230,24 @@ def _comparison(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) 
 
 
 def _answers(question: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> Iterator[dict[str, Any]]:
-    """Yield one answer a channel, or one for the mean of the channels."""
-    from bandcairn.statistics import compare
-
+    """Yield one answer a channel, or one for the mean of the channels, and one of equivalence where it is asked."""
     for asked in asked_of(question, rows):
-        result = compare(asked.values, asked.participants, asked.levels, asked.comparison)
         uneven = uneven_epochs(question, asked.rows)
-        yield {
-            **asdict(result),
-            "note": "; ".join(filter(None, (result.note, uneven))) or None,
-            **named(question, asked),
-        }
+        for result in _results(question, asked):
+            yield {
+                **asdict(result),
+                "note": "; ".join(filter(None, (result.note, uneven))) or None,
+                **named(question, asked),
+            }
+
+
+def _results(question: Mapping[str, Any], asked: Asked) -> Iterator[Result]:
+    from bandcairn.statistics import Interval, compare, equivalence
+
+    people = asked.values, asked.participants, asked.levels
+    yield compare(*people, asked.comparison)
+    if "equivalence" in question:
+        yield equivalence(*people, asked.comparison, Interval(*question["equivalence"]))
 
 
 def named(question: Mapping[str, Any], asked: Asked) -> dict[str, Any]:

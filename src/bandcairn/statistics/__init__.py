@@ -10,12 +10,14 @@ from bandcairn.statistics.adjustment import adjust, available_adjustments
 from bandcairn.statistics.comparing import compare, compare_table
 from bandcairn.statistics.comparison import Comparison
 from bandcairn.statistics.descriptives import Description, describe
+from bandcairn.statistics.equivalence import equivalence
 from bandcairn.statistics.registry import available_tests
-from bandcairn.statistics.result import Result
+from bandcairn.statistics.result import Interval, Result
 
 __all__ = [
     "Comparison",
     "Description",
+    "Interval",
     "Result",
     "adjust",
     "available_adjustments",
@@ -23,4 +25,5 @@ __all__ = [
     "compare",
     "compare_table",
     "describe",
+    "equivalence",
 ]

@@ -85,10 +85,11 @@ def compare(
     """
     sample = gather(values, participants, levels, comparison)
     test = function_of(comparison.test, comparison.design, comparison.seed)
-    return _result(comparison, sample, test(sample.first, sample.second, comparison.confidence))
+    return result_of(comparison, sample, test(sample.first, sample.second, comparison.confidence))
 
 
-def _result(comparison: Comparison, sample: Sample, outcome: Outcome) -> Result:
+def result_of(comparison: Comparison, sample: Sample, outcome: Outcome) -> Result:
+    """Return what a test makes of a sample in full, with the words on the people."""
     interval, effect = outcome.interval, outcome.effect
     notes = [*_ratio(comparison, outcome), *outcome.notes, *sample.notes]
     return Result(

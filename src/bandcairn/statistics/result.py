@@ -74,17 +74,17 @@ class Result:
     ci_low, ci_high : float or None
         Confidence interval of `estimate`.
     statistic : float or None
-        The test statistic: t.
+        The test statistic: t, the sum of positive ranks, the number of pairs of people, or the mean difference.
     df : float or None
         Its degrees of freedom.
     df2 : float or None
         Degrees of freedom of the denominator; None where the statistic has none.
     p : float or None
-        Two-sided p value, not adjusted.
+        Two-sided p value, of equivalence the larger one-sided one; not adjusted.
     effect_size : float or None
         Standardised effect size, positive when first exceeds second.
     effect_size_name : str or None
-        Its formula's name: "Cohen's d_z" or "Hedges' g".
+        Its formula's name: "Cohen's d_z", "Hedges' g" or a rank-biserial r.
     effect_ci_low, effect_ci_high : float or None
         Confidence interval of the population's standardised effect.
     n_participants : int

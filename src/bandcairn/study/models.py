@@ -337,6 +337,13 @@ class EmgSignal(_Signal):
 AnySignal = EegSignal | EcgSignal | EmgSignal
 
 
+def _around_zero(bounds: tuple[float, float]) -> tuple[float, float]:
+    if not bounds[0] < 0 < bounds[1]:
+        found = f"[{bounds[0]:g}, {bounds[1]:g}]"
+        raise refusal("", found, "two values with 0 between them", "Write the lower value first.")
+    return bounds
+
+
 class Question(Block):
     """One declared comparison."""
 
@@ -418,6 +425,14 @@ class Question(Block):
             ),
         )
     )
+    equivalence: Annotated[tuple[Number, Number], AfterValidator(_around_zero)] | None = Field(
+        default=None,
+        description="Largest differences that do not matter, on the scale: tested for equivalence by two one-sided "
+        "tests in a row of its own; absent: not tested.",
+        json_schema_extra=told(
+            "unit of the estimate", "two values with 0 between them; paired_t or welch_t only"
+        ),
+    )
     confidence: Annotated[Number, Field(gt=0.5, lt=1)] = Field(
         default=0.95,
         description="Coverage of the confidence intervals.",
@@ -437,6 +452,9 @@ class Question(Block):
             raise refusal(
                 "seed", str(self.seed), f"no seed with {self.test}", "Delete it, or use permutation."
             )
+        if self.equivalence is not None and not self.test.endswith("_t"):
+            allowed = f"no equivalence with {self.test}"
+            raise refusal("equivalence", "bounds", allowed, "Delete it, or use paired_t or welch_t.")
         if self.contrast[0] == self.contrast[1]:
             raise refusal("contrast", f"{self.contrast[0]} twice", "two different levels", "Name two levels.")
         return self
