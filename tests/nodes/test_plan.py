@@ -115,6 +115,7 @@ FATIGUE = of("fatigue by shift", "statistics")
             FATIGUE,
         ),
         ("feature: median_frequency\n", "feature: median_frequency\n    adjustment: holm\n", set()),
+        ("feature: median_frequency\n", "feature: median_frequency\n    role: primary\n", set()),
         ("name: fatigue by shift", "name: fatigue at night", FATIGUE | of("fatigue at night", "statistics")),
         ("study: Harbour", "study: Lighthouse", set()),
         (

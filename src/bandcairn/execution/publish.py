@@ -29,6 +29,7 @@ if TYPE_CHECKING:
     from bandcairn.execution.project import Project
     from bandcairn.nodes.node import Node
     from bandcairn.store.store import Store
+    from bandcairn.study.models import Question
 
 RUN_FILE = "run.json"
 # The table that came last to the results: a run of an earlier version did not write it.
@@ -77,8 +78,9 @@ def published(project: Project) -> bool:
 
 
 def _words(project: Project) -> str:
-    """Return a digest of the words that the results hold and no key does: who decided what, when and why."""
+    """Return a digest of the words that the results hold and no key does: decisions, and the roles of questions."""
     told = [f"{row.recording} {row.signal} {row.channel} {row.told}" for row in project.study.decisions]
+    told += [f"{question.name} is {question.role}" for question in _questions(project) if question.role]
     return hashlib.sha256("\n".join(told).encode()).hexdigest()[:16] if told else ""
 
 
@@ -138,11 +140,11 @@ def publish(
     verdicts = [row for node in study_nodes if node.step == "verdict" for row in frames[node.key]]
     tables = {
         "features": (_features_schema(project), with_words(project, features)),
-        "statistics": (STATISTICS_COLUMNS | {"node": "text"}, _answers(project, study_nodes, frames)),
-        "descriptives": (
-            DESCRIPTIVES_SCHEMA,
-            _in_order_of_questions(project, list(descriptives_rows(study_nodes, frames))),
+        "statistics": (
+            STATISTICS_COLUMNS | {"node": "text", "role": "text"},
+            _answers(project, study_nodes, frames),
         ),
+        "descriptives": (DESCRIPTIVES_SCHEMA, _descriptives(project, study_nodes, frames)),
         "quality": (VERDICT_COLUMNS | {"passed": "yes_no"}, [_with_truth(row) for row in verdicts]),
         "epochs": (epochs_schema(project), counts),
         "exclusions": (EXCLUSIONS_SCHEMA, list(_exclusions(project, counts, verdicts, failures))),
@@ -195,14 +197,27 @@ def _features(project: Project, rows: Sequence[Mapping[str, Any]]) -> list[dict[
 def _answers(
     project: Project, study_nodes: Sequence[Node], frames: Mapping[str, Sequence[dict[str, Any]]]
 ) -> list[dict[str, Any]]:
-    """Return the rows of the statistics, each with the node it comes from."""
+    """Return the rows of the statistics, each with the node it comes from and the role of its question."""
+    role = {question.name: question.role for question in _questions(project)}
     nodes = [node for node in study_nodes if node.step == "statistics"]
-    rows = [row | {"node": node.key} for node in nodes for row in frames[node.key]]
+    rows = [
+        row | {"node": node.key, "role": role[row["question"]]} for node in nodes for row in frames[node.key]
+    ]
     return _in_order_of_questions(project, rows)
 
 
+def _descriptives(
+    project: Project, study_nodes: Sequence[Node], frames: Mapping[str, Sequence[dict[str, Any]]]
+) -> list[dict[str, Any]]:
+    return _in_order_of_questions(project, list(descriptives_rows(study_nodes, frames)))
+
+
+def _questions(project: Project) -> tuple[Question, ...]:
+    return project.study.description.questions
+
+
 def _in_order_of_questions(project: Project, rows: Sequence[dict[str, Any]]) -> list[dict[str, Any]]:
-    place = {question.name: index for index, question in enumerate(project.study.description.questions)}
+    place = {question.name: index for index, question in enumerate(_questions(project))}
     return sorted(rows, key=lambda row: place[row["question"]])
 
 

@@ -432,4 +432,4 @@ def _statistics_node(
 def _question(question: Question, channels: tuple[str, ...]) -> dict[str, Any]:
     """Return a question with the names of its channels written out."""
     named = channels if isinstance(question.channels, str) else question.channels
-    return {**_recipe(question, exclude={"family", "adjustment"}), "channel_names": named}
+    return {**_recipe(question, exclude={"family", "adjustment", "role"}), "channel_names": named}

@@ -433,6 +433,11 @@ class Question(Block):
             "unit of the estimate", "two values with 0 between them; paired_t or welch_t only"
         ),
     )
+    role: Literal["primary", "secondary", "exploratory"] | None = Field(
+        default=None,
+        description="What the study makes of the answer, told beside it; it changes no number; absent: not told.",
+        json_schema_extra=told("", "primary, secondary or exploratory"),
+    )
     confidence: Annotated[Number, Field(gt=0.5, lt=1)] = Field(
         default=0.95,
         description="Coverage of the confidence intervals.",
