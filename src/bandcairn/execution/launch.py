@@ -25,7 +25,7 @@ if TYPE_CHECKING:
 
 LOG_NAME = f"{STORE_NAME}/last_run.log"
 
-# Where the C library of GNU serves memory: let it keep what is freed, for the next recording wants as much again. Giving
+# Where the C library of GNU serves memory: let it keep what is freed, for the next recording wants as much. Giving
 # megabytes back and asking for them anew, page by page, took a tenth of the time.
 _KEEP_MEMORY = dict.fromkeys(("MALLOC_TRIM_THRESHOLD_", "MALLOC_MMAP_THRESHOLD_"), str(1 << 30))
 
