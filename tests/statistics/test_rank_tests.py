@@ -97,7 +97,7 @@ def test_many_people_are_answered_by_the_normal_approximation_and_that_is_told(
     """Beyond 50 people p is an approximation, below it is counted."""
     first, second = np.random.default_rng(3).normal(0.2, 1, (2, n)).tolist()
 
-    assert test(first, second, 0.95).notes == ("p by the normal approximation (more than 50)",)
+    assert test(first, second, 0.95).notes == ("p by the normal approximation (more than 50 ranks)",)
     assert test(first[:-1], second[:-1], 0.95).notes[0] == "p exact"
 
 

@@ -220,16 +220,18 @@ def _flips(n: int, seed: int) -> _Arrangements:
 @lru_cache(maxsize=4)
 def _exchanges(n_lead: int, n_other: int, seed: int) -> _Arrangements:
     n = n_lead + n_other
-    exact = math.comb(n, n_lead) <= _MOST_ARRANGEMENTS
+    n_all = math.comb(n, n_lead)
+    exact = n_all <= _MOST_ARRANGEMENTS
+    leads = np.zeros((n_all if exact else _MOST_ARRANGEMENTS, n), dtype=bool)
     if exact:
         # In this order the first leads as observed.
         members = np.array(list(itertools.combinations(range(n), n_lead)))
+        np.put_along_axis(leads, members, values=True, axis=1)
     else:
         rng = np.random.default_rng(seed)
-        orders = (rng.random((_BLOCK, n)) for _ in range(_MOST_ARRANGEMENTS // _BLOCK))
-        members = np.concatenate([np.argsort(order, axis=1, kind="stable")[:, :n_lead] for order in orders])
-        members[0] = np.arange(n_lead)
-    leads = np.zeros((len(members), n), dtype=bool)
-    np.put_along_axis(leads, members, values=True, axis=1)
+        for block in np.split(leads, _cuts(len(leads))):
+            drawn = np.argpartition(rng.random(block.shape), n_lead, axis=1)[:, :n_lead]
+            np.put_along_axis(block, drawn, values=True, axis=1)
+        leads[0] = np.arange(n) < n_lead
     leads[:, :n_lead] ^= True
     return _Arrangements(leads, exact=exact)

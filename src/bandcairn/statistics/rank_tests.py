@@ -157,7 +157,7 @@ def _how_p(sums: RankSums, ranks: Sequence[int]) -> tuple[str, ...]:
     if sums.counts is not None:
         return (f"p exact{tied}",)
     corrected = ", corrected for ties" if tied else ""
-    return (f"p by the normal approximation{corrected} (more than {MOST_COUNTED})",)
+    return (f"p by the normal approximation{corrected} (more than {MOST_COUNTED} ranks)",)
 
 
 def _how_covered(cut: Cut | None, n: int, confidence: float) -> tuple[str, ...]:
