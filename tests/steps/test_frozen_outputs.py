@@ -31,7 +31,7 @@ from bandcairn.steps.epoch import Epochs
 from bandcairn.store.frame import Frame
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator, Mapping
+    from collections.abc import Iterator, Mapping, Sequence
 
     from numpy.typing import NDArray
 
@@ -289,12 +289,44 @@ def emg_features() -> Frame:
 
 
 def statistics() -> Iterator[Frame]:
-    """Yield a paired and an unpaired question on every scale of one family."""
-    people = [f"p{number}" for number in range(9) for _ in range(2)]
-    n = len(people)
+    """Yield a family on every scale by t tests of a few people, and one of more people by the other tests."""
+    scales = ("identity", "log10", "ln", "logit")
+    designs = (WITHIN | {"test": "paired_t"}, BETWEEN | {"test": "welch_t"})
+    yield statistics_of(
+        9,
+        "holm",
+        [
+            design | {"scale": scale, "name": f"{design['test']} {scale}"}
+            for design in designs
+            for scale in scales
+        ],
+    )
+    others = (
+        WITHIN | {"test": "wilcoxon"},
+        BETWEEN | {"test": "mann_whitney"},
+        WITHIN | {"test": "permutation", "seed": 1},
+        BETWEEN | {"test": "permutation", "seed": 2},
+        WITHIN | {"test": "paired_t", "equivalence": [-0.3, 0.3]},
+        BETWEEN | {"test": "welch_t", "equivalence": [-0.3, 0.3]},
+    )
+    yield statistics_of(
+        20,
+        "benjamini_yekutieli",
+        [other | {"scale": "identity", "name": f"question {number}"} for number, other in enumerate(others)],
+    )
+
+
+WITHIN: dict[str, Any] = {"within": "shift", "contrast": ["night", "day"]}
+BETWEEN: dict[str, Any] = {"between": "group", "contrast": ["crew", "office"]}
+
+
+def statistics_of(n_people: int, adjustment: str, questions: Sequence[dict[str, Any]]) -> Frame:
+    """Return the answers about shares of people, the half of whom are of the crew."""
+    people = [f"p{number}" for number in range(n_people) for _ in range(2)]
+    n, n_crew = len(people), n_people // 2
     share = np.random.default_rng(16).uniform(0.1, 0.4, n)
     share[1::2] += 0.2
-    share[:8] += 0.2
+    share[: 2 * n_crew] += 0.2
     table = Frame(
         {
             "recording": tuple(f"r{number}" for number in range(n)),
@@ -307,7 +339,7 @@ def statistics() -> Iterator[Frame]:
             "unit": ("1",) * n,
             "epochs_used": np.full(n, 20),
             "design/shift": ("day", "night") * (n // 2),
-            "design/group": tuple("crew" if int(person[1:]) < 4 else "office" for person in people),
+            "design/group": tuple("crew" if int(person[1:]) < n_crew else "office" for person in people),
         }
     )
     question = {
@@ -318,17 +350,9 @@ def statistics() -> Iterator[Frame]:
         "channel_names": ["A"],
         "confidence": 0.9,
     }
-    designs = (
-        {"within": "shift", "contrast": ["night", "day"], "test": "paired_t"},
-        {"between": "group", "contrast": ["crew", "office"], "test": "welch_t"},
-    )
-    questions = [
-        {**question, **design, "scale": scale, "name": f"{design['test']} {scale}"}
-        for design in designs
-        for scale in ("identity", "log10", "ln", "logit")
-    ]
-    yield node_of(
-        "statistics", {"family": "all", "adjustment": "holm", "questions": questions}, table__eeg=table
+    asked = [question | each for each in questions]
+    return node_of(
+        "statistics", {"family": "all", "adjustment": adjustment, "questions": asked}, table__eeg=table
     )
 
 
