@@ -19,8 +19,11 @@ def test_a_comparison_never_loads_the_slow_distributions() -> None:
     """`scipy.stats` costs a second: scipy.special has all that is needed."""
     code = (
         "import sys; from bandcairn.statistics import Comparison, compare;"
-        "compare([1, 2, 4, 9], list('abab'), list('xxyy'), Comparison('within', 'f', 'x', 'y', 'paired_t'));"
-        "compare([1, 2, 4, 9], list('abcd'), list('xxyy'), Comparison('between', 'f', 'x', 'y', 'welch_t'));"
+        "people = {'within': list('abab'), 'between': list('abcd')};"
+        "tests = {'within': ['paired_t', 'wilcoxon', 'permutation'],"
+        " 'between': ['welch_t', 'mann_whitney', 'permutation']};"
+        "[compare([1, 2, 4, 9], people[d], list('xxyy'), Comparison(d, 'f', 'x', 'y', t))"
+        " for d in tests for t in tests[d]];"
         "print([m for m in ('scipy.stats', 'scipy.optimize') if m in sys.modules])"
     )
 
