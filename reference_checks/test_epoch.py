@@ -74,7 +74,7 @@ def test_steps_equal_the_differences_of_numpy() -> None:
 
 
 def test_an_average_about_events_recovers_what_is_locked_to_them() -> None:
-    """Truth: definition, planted. A wave that follows every event by 0.3 s, at times off the grid, stands at 0.3 s in the mean.
+    """Truth: definition, planted. A wave 0.3 s after every event, at times off the grid, stands at 0.3 s in the mean.
 
     Tolerance: half a sample of shift of each event, and noise of 1 uV over the root of 400 events.
     """

@@ -46,7 +46,9 @@ def test_run_of_a_finished_study_reports_nothing_computed(study: Path) -> None:
     assert (report.computed, report.rewritten, report.outcome.failures) == (0, False, ())
 
 
-@pytest.mark.parametrize("name", ["features", "statistics", "descriptives", "quality", "epochs", "exclusions", "ledger"])
+@pytest.mark.parametrize(
+    "name", ["features", "statistics", "descriptives", "quality", "epochs", "exclusions", "ledger"]
+)
 def test_results_older_than_the_study_are_refused(
     study: Path, edit_study: Callable[..., None], name: str
 ) -> None:

@@ -11,8 +11,9 @@ from pydantic import ValidationError
 
 from bandcairn.study.catalogue import FEATURES, find_feature
 from bandcairn.study.description import load_study
+from bandcairn.study.epoch_blocks import Epoch
 from bandcairn.study.filter_blocks import FilterStage
-from bandcairn.study.models import EegSpectrum, Epoch, Load, StudyDescription
+from bandcairn.study.models import EegSpectrum, Load, StudyDescription
 
 if TYPE_CHECKING:
     from pathlib import Path

@@ -15,6 +15,7 @@ from typing import IO, TYPE_CHECKING, Any
 from bandcairn.errors import EngineError, Problem, StudyError
 from bandcairn.execution.progress import PIPE_VARIABLE
 from bandcairn.execution.publish import Outcome, publish, published, read_run
+from bandcairn.execution.threads import ONE_THREAD
 from bandcairn.execution.wiring import RUN_VARIABLE, clear_receipts, run_name
 from bandcairn.store.layout import STORE_NAME, make_private_folder
 
@@ -172,7 +173,7 @@ def _follow_engine(
 ) -> tuple[int, int]:
     """Start the engine and follow it to its end; if interrupted, end it before anything else is done."""
     reading, writing = os.pipe()
-    environment = {**_KEEP_MEMORY, **os.environ, PIPE_VARIABLE: str(writing), RUN_VARIABLE: run}
+    environment = {**_KEEP_MEMORY, **os.environ, **ONE_THREAD, PIPE_VARIABLE: str(writing), RUN_VARIABLE: run}
     computed = 0
     with subprocess.Popen(  # noqa: S603 - our own interpreter and Snakefile
         engine_command(study_folder.resolve(), cores),

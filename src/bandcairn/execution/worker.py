@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 from bandcairn.errors import DamagedNodeError, RecordingError
 from bandcairn.execution.compute import compute
 from bandcairn.execution.failure import Failure
+from bandcairn.execution.threads import hold_to_one_thread
 from bandcairn.nodes.plan import plan_study_nodes
 from bandcairn.provenance.record import make_record, now
 from bandcairn.store.layout import present_keys
@@ -42,6 +43,7 @@ class Worker:
     """
 
     def __init__(self, project: Project, report: Callable[[Node, float], None] = lambda *_: None) -> None:
+        hold_to_one_thread()
         self.project = project
         self.store = Store(project.store_folder)
         self._report = report
