@@ -215,7 +215,7 @@ class TestWaysToRun:
         assert (run.returncode, err) == (0, "")
         assert re.match(r"computed 2 of \d+ nodes in \d+ s\nleft out: nothing .*\nresults: ", out)
         assert "\x1b" not in out
-        assert len(out.splitlines()) == 3
+        assert len(out.splitlines()) == 4
 
 
 class TestPrivacy:

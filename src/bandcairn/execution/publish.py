@@ -141,7 +141,7 @@ def publish(
     tables = {
         "features": (_features_schema(project), with_words(project, features)),
         "statistics": (
-            STATISTICS_COLUMNS | {"node": "text", "role": "text"},
+            STATISTICS_COLUMNS | {"node": "text"} | ({"role": "text"} if _roles_told(project) else {}),
             _answers(project, study_nodes, frames),
         ),
         "descriptives": (DESCRIPTIVES_SCHEMA, _descriptives(project, study_nodes, frames)),
@@ -210,6 +210,11 @@ def _descriptives(
     project: Project, study_nodes: Sequence[Node], frames: Mapping[str, Sequence[dict[str, Any]]]
 ) -> list[dict[str, Any]]:
     return _in_order_of_questions(project, list(descriptives_rows(study_nodes, frames)))
+
+
+def _roles_told(project: Project) -> bool:
+    """Tell whether the study says of any question what part it plays; else the column would be empty."""
+    return any(question.role for question in _questions(project))
 
 
 def _questions(project: Project) -> tuple[Question, ...]:
