@@ -177,6 +177,8 @@ class _SignalChain:
         self.reference = canonical_json(_reference_recipe(signal.reference)) if signal.reference else None
         self.spectrum = canonical_json({"kind": signal.kind, **_recipe(signal.spectrum)})
         self.features = canonical_json({"kind": signal.kind, **_recipe(signal.features), **_least(signal)})
+        resample = signal.resample
+        self.resample = canonical_json({} if resample is None else {"rate_hz": resample.rate_hz})
         self.mains_hz = study.description.mains_hz
         self.load_parameters = cache(self._load_parameters)
         self.quality_parameters = cache(self._quality_parameters)
@@ -212,7 +214,7 @@ class _SignalChain:
         if resample is not None and _exact(resample.rate_hz) != _exact(
             content.rate_hz(self.channels[0], rate_hz)
         ):
-            node = make("resample", canonical_json({"rate_hz": resample.rate_hz}), signal=key)
+            node = make("resample", self.resample, signal=key)
             key = node.key
             yield node
         if self.reference is not None:
