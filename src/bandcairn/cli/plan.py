@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from bandcairn.execution.project import Project
+    from bandcairn.nodes.node import Node
     from bandcairn.provenance.changes import Reason
 
 _MOST_LINES = 60
@@ -35,7 +36,7 @@ def plan(
     """Tell which nodes would run and why, and about how long it would take. Computes nothing."""
     project = opened(study, quiet=as_json)
     missing = project.missing()
-    found, seconds = _explained(project, cores_or_all(cores)) if missing else ([], 0.0)
+    found, seconds = _explained(project, missing, cores_or_all(cores)) if missing else ([], 0.0)
     if as_json:
         print_json(
             {
@@ -55,12 +56,11 @@ def plan(
     say(f"{len(missing)} of {len(project.plan.nodes)} nodes would run; {time} on {cores_or_all(cores)} cores")
 
 
-def _explained(project: Project, cores: int) -> tuple[list[Reason], float | None]:
+def _explained(project: Project, missing: Sequence[Node], cores: int) -> tuple[list[Reason], float | None]:
     from bandcairn.provenance.changes import reasons
     from bandcairn.provenance.estimate import estimated_seconds
     from bandcairn.provenance.ledger import read_ledger
 
-    missing = project.missing()
     ledger = read_ledger(project.results_folder)
     seconds = estimated_seconds(missing, ledger, cores)
     return reasons(missing, ledger), None if seconds is None else seconds + _ENGINE_START_S

@@ -10,6 +10,7 @@ from bandcairn.study.sheet import (
     read_sheet,
     refuse_blank,
     refuse_empty_stretch,
+    refuse_other_columns,
     refuse_repeated,
     seconds,
 )
@@ -125,10 +126,7 @@ def read_events(path: Path, name: str) -> EventsTable:
 def read_decisions(path: Path, name: str) -> DecisionsTable:
     """Read the table of decisions; parameters and result as in `read_events`."""
     sheet = read_sheet(path, name, _DECISION_COLUMNS)
-    for column in sheet.columns:
-        if column and column not in _DECISION_COLUMNS:
-            allowed = ", ".join(_DECISION_COLUMNS)
-            sheet.refuse(column, f"the column {column}", allowed, "Delete the column.", row=1)
+    refuse_other_columns(sheet, _DECISION_COLUMNS)
     rows = [row for line, cells in sheet.rows if (row := _decision(sheet, line, cells))]
     keys = (
         (row.row, f"{row.signal}/{row.channel} from {row.start_s} to {row.stop_s} of {row.recording}")

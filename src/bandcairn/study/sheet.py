@@ -103,6 +103,13 @@ def _add_row(sheet: Sheet, line: int, cells: list[str]) -> None:
     sheet.rows.append((line, dict(zip(sheet.columns, cells, strict=True))))
 
 
+def refuse_other_columns(sheet: Sheet, allowed: tuple[str, ...]) -> None:
+    """Refuse every named column that such a table does not have."""
+    for column in sheet.columns:
+        if column and column not in allowed:
+            sheet.refuse(column, f"the column {column}", ", ".join(allowed), "Delete the column.", row=1)
+
+
 def refuse_repeated(sheet: Sheet, keys: Iterable[tuple[int, str]], column: str, remedy: str) -> None:
     """Refuse keys that stand in several rows."""
     first_rows: dict[str, int] = {}

@@ -12,6 +12,7 @@ from bandcairn.study.sheet import (
     read_sheet,
     refuse_blank,
     refuse_empty_stretch,
+    refuse_other_columns,
     refuse_repeated,
     refuse_unfit_name,
     seconds,
@@ -156,10 +157,7 @@ def read_segments(path: Path, name: str) -> SegmentsTable:
         Faulty rows are left out of `rows`, and each fault is in `problems`.
     """
     sheet = read_sheet(path, name, _SEGMENT_COLUMNS)
-    for column in sheet.columns:
-        if column and column not in _SEGMENT_COLUMNS:
-            allowed = ", ".join(_SEGMENT_COLUMNS)
-            sheet.refuse(column, f"the column {column}", allowed, "Delete the column.", row=1)
+    refuse_other_columns(sheet, _SEGMENT_COLUMNS)
     rows = [row for line, cells in sheet.rows if (row := _segment(sheet, line, cells))]
     names = ((row.row, f"{row.segment} of {row.recording}") for row in rows)
     refuse_repeated(sheet, names, "segment", "Rename one of the two.")
